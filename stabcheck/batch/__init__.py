@@ -1,0 +1,1 @@
+"""Who runs the tasks: in place, or local workers under supervision."""

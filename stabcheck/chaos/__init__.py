@@ -1,0 +1,1 @@
+"""One chaos indicator a file."""

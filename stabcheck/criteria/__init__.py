@@ -1,0 +1,1 @@
+"""Analytic limits, one theory a file, evaluated on elements without integrating."""

@@ -1,0 +1,1 @@
+"""What integrates. One contract (``base``), one folder an engine."""

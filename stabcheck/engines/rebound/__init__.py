@@ -1,0 +1,25 @@
+"""The ``rebound`` engine: one draw at a time with WHFast, TRACE or IAS15, watched at every step by compiled code."""
+
+from collections.abc import Iterable, Iterator
+
+from stabcheck.outcome import Message
+from stabcheck.plan import Plan, Task
+
+
+class ReboundEngine:
+    """Follow draws one after the other; signs the contract of ``engines.base``.
+
+    The kernels are compiled when the first engine is made; after that they come from a cache.
+    """
+
+    def __init__(self) -> None:
+        from stabcheck.engines.rebound.library import check_layout
+
+        check_layout()
+
+    def follow(self, tasks: Iterable[Task], plan: Plan) -> Iterator[Message]:
+        """Follow tasks in the order they come, each to its end."""
+        from stabcheck.engines.rebound.follow import follow_draw
+
+        for task in tasks:
+            yield from follow_draw(task, plan)

@@ -1,0 +1,1 @@
+"""From a run file to an answer: statistics, tables, figures, methods text."""
