@@ -66,6 +66,13 @@ class Plan:
     """Wall-clock spacing of checkpoints; changes no result and is not part of the identity."""
 
     def __post_init__(self) -> None:
+        if not isinstance(self.method, Method):
+            raise PlanError(
+                f"method is {self.method!r}",
+                where="plan",
+                why="it must be one of " + ", ".join(f"Method.{m.name}" for m in Method),
+                do=f"write Method({self.method!r}) if that is one of their values",
+            )
         positive = (
             "steps_per_periastron",
             "fewest_steps_per_periastron",

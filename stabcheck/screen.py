@@ -21,11 +21,11 @@ from stabcheck.batch.processes import refuse_while_importing_main
 from stabcheck.batch.progress import Progress
 from stabcheck.build import states
 from stabcheck.ensemble import Ensemble, Source, draw, source
-from stabcheck.errors import PlanError, ScenarioError
+from stabcheck.errors import PlanError
 from stabcheck.outcome import Trust
-from stabcheck.plan import Method, Plan, Task
+from stabcheck.plan import Plan, Task
+from stabcheck.planning import plan_of, spans_of, task_of
 from stabcheck.scenario import Scenario
-from stabcheck.span import span_d
 from stabcheck.store import DrawColumn, DrawRow, RunFile
 from stabcheck.verdict import Verdict, verdict
 
@@ -178,26 +178,6 @@ def screen(
     return reached
 
 
-def plan_of(scenario: Scenario) -> Plan:
-    """Say how the draws of a scenario are followed."""
-    integration, endings = scenario.integration, scenario.endings
-    return Plan(
-        method=Method(integration.method),
-        relativity=scenario.physics.relativity,
-        indicator=integration.indicator,
-        seed=scenario.draws.seed,
-        steps_per_periastron=integration.steps_per_periastron,
-        ejection_distance_au=_or_nan(endings.ejection_distance),
-        stop_approach_au=_or_nan(endings.stop_approach),
-        stop_distance_au=_or_nan(endings.stop_distance),
-        rearranged_share=scenario.rearranged.axis_share,
-    )
-
-
-def _or_nan(value: float | None) -> float:
-    return float("nan") if value is None else value
-
-
 def identity_of(opened: Source, plan: Plan, engines: Sequence[str]) -> dict[str, Any]:
     """Say what must agree before a run is continued; the number of draws is not part of it."""
     return {
@@ -276,22 +256,13 @@ def rows_of(opened: Source, plan: Plan, first: int, count: int) -> list[DrawRow]
         If a draw is an orbit, but the span's unit is not defined for it.
     """
     ensemble = draw(opened, first, count)
-    span = opened.scenario.integration.span
-    spans = span_d(span, ensemble, relativity=plan.relativity)
-    lost = [first + k for k in range(count) if not ensemble.refused[k] and not np.isfinite(spans[k])]
-    if lost:
-        raise ScenarioError(
-            f"a span of {span} is not defined for draw {lost[0]}" + (f" and {len(lost) - 1} more" if lost[1:] else ""),
-            where="[integration], span",
-            why="without a second planet or relativity nothing precesses, and equal axes have no secular theory",
-            do='count in years or orbits: "1 Myr", "1e5 inner orbits"',
-        )
+    spans = spans_of(opened.scenario, ensemble, relativity=plan.relativity)
     built = states(ensemble)
     values = _values(ensemble)
     return [
         DrawRow(
             number=first + k,
-            state=b"" if ensemble.refused[k] else _task(built, k, first + k, float(spans[k])).as_bytes(),
+            state=b"" if ensemble.refused[k] else task_of(built, k, first + k, float(spans[k])).as_bytes(),
             values=values[k].tobytes(),
             refused=str(ensemble.refused[k]),
             weight=float(ensemble.weight[k]),
@@ -306,17 +277,6 @@ def _values(ensemble: Ensemble) -> Any:
     columns = [*ensemble.parameters.values(), *(getattr(ensemble, name) for name in STAR)]
     columns += [getattr(ensemble, name)[:, k] for name in ELEMENTS for k in range(len(ensemble.bodies))]
     return np.ascontiguousarray(np.stack(columns, axis=1), dtype="<f8")
-
-
-def _task(built: Any, row: int, number: int, span: float) -> Task:
-    return Task(
-        number=number,
-        mass_msun=built.mass_msun[row],
-        radius_au=built.radius_au[row],
-        position_au=built.position_au[row],
-        velocity_au_d=built.velocity_au_d[row],
-        span_d=span,
-    )
 
 
 def state_of(run: RunFile, draws: int) -> Run:

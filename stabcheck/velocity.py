@@ -100,7 +100,7 @@ def nbody_velocity_m_s(states: States, row: int, time_d: Array, smallest_step_d:
         sim = simulation(states, row)
         sim.integrator = "ias15"
         sim.integrator.min_dt = smallest_step_d
-        with _interruptible():
+        with interruptible():
             for place in outwards:
                 sim.integrate(float(times[place]))
                 velocity[place] = sim.particles[0].vz / M_S_AU_D
@@ -108,7 +108,7 @@ def nbody_velocity_m_s(states: States, row: int, time_d: Array, smallest_step_d:
 
 
 @contextmanager
-def _interruptible() -> Iterator[None]:
+def interruptible() -> Iterator[None]:
     """Give Ctrl-C back to Python: each integrate() of REBOUND leaves its own handler for it installed."""
     handler = signal.getsignal(signal.SIGINT)
     try:

@@ -9,8 +9,9 @@ from typing import Any
 from stabcheck.build import States, states
 from stabcheck.constants import YEAR_D
 from stabcheck.ensemble import Ensemble, central, phase_error_deg, source
+from stabcheck.planning import plan_of
 from stabcheck.preview import cautions, text
-from stabcheck.preview.cost import cost_of, plan_for_estimate
+from stabcheck.preview.cost import cost_of
 from stabcheck.preview.orbits import elements_in, other_reading, pairs_of, planets_of
 from stabcheck.preview.parts import CostFacts, FrameFacts, PairFacts, PlanetFacts, RateFacts, SpanFacts
 from stabcheck.preview.rates import DEG_CENTURY, modes_rad_d, rates_of
@@ -187,19 +188,12 @@ def _departure(asked: Scenario, row: Ensemble, built: States | None) -> float:
 
 
 def _cost(asked: Scenario, row: Ensemble, built: States, span: SpanFacts, draws: int) -> CostFacts:
-    integration = asked.integration
-    plan = plan_for_estimate(
-        integration.method,
-        relativity=asked.physics.relativity,
-        indicator=integration.indicator,
-        steps_per_periastron=integration.steps_per_periastron,
-    )
     return cost_of(
         built,
         elements_in(Frame.JACOBI, built),
         row.period_d[0],
         span.years * YEAR_D,
-        plan,
+        plan_of(asked),
         draws=draws,
         parameters=len(row.parameters),
     )

@@ -26,16 +26,6 @@ BYTES_FIXED, BYTES_BODY, BYTES_PARAMETER = 120, 240, 9
 """Of a finished draw in the run file: measured, and held to a quarter by a test."""
 
 
-def plan_for_estimate(method: str, *, relativity: bool, indicator: bool, steps_per_periastron: float) -> Plan:
-    """Make a plan that is good enough to choose a method and a step."""
-    return Plan(
-        method=Method(method),
-        relativity=relativity,
-        indicator=indicator,
-        steps_per_periastron=steps_per_periastron,
-    )
-
-
 def cost_of(
     built: States, jacobi: Elements, period_d: Array, span_d: float, plan: Plan, *, draws: int, parameters: int
 ) -> CostFacts:

@@ -9,12 +9,13 @@ from made_up_draws import broken, survived, unknown
 from stabcheck.ensemble import draw, source
 from stabcheck.errors import StabcheckError
 from stabcheck.outcome import Finished
+from stabcheck.planning import plan_of
 from stabcheck.report.answer import answer_of
 from stabcheck.report.export import export
 from stabcheck.report.from_run_file import run_table
 from stabcheck.report.page import report
 from stabcheck.scenario import Scenario
-from stabcheck.screen import columns_of, identity_of, plan_of, rows_of
+from stabcheck.screen import columns_of, identity_of, rows_of
 from stabcheck.store import RunFile
 
 TWO = """

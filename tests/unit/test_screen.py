@@ -10,8 +10,9 @@ from stabcheck.build import states
 from stabcheck.ensemble import draw
 from stabcheck.errors import PlanError, ResumeRefused, ScenarioError, WorkerError
 from stabcheck.plan import Method, Task
+from stabcheck.planning import plan_of
 from stabcheck.scenario import Scenario
-from stabcheck.screen import ELEMENTS, Interrupted, plan_of, screen, usable_cores
+from stabcheck.screen import ELEMENTS, Interrupted, screen, usable_cores
 from stabcheck.store import RunFile
 
 TOY = "toy_engine:ToyEngine"

@@ -70,7 +70,7 @@ def limits_of(setting: Setting, stage: Stage, plan: Plan) -> Array:
     limits[kernels.STOP_APPROACH] = np.nan_to_num(plan.stop_approach_au, nan=0.0)
     limits[kernels.STOP_DISTANCE2] = np.nan_to_num(plan.stop_distance_au, nan=np.inf) ** 2
     limits[kernels.EJECTION2] = setting.ejection_au**2
-    limits[kernels.SPEED_WEIGHT] = (float(np.nanmin(setting.period_d)) / (2.0 * np.pi)) ** 2
+    limits[kernels.SPEED_WEIGHT] = (float(np.min(setting.period_d)) / (2.0 * np.pi)) ** 2
     return limits
 
 
@@ -90,7 +90,7 @@ def run_block(track: Track, setting: Setting, stage: Stage, plan: Plan) -> Block
     """
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always")
-        simulation = _simulation(track, setting, stage)
+        simulation = simulation_at(track, setting, stage)
         event = np.zeros(2)
         code = kernels.advance(
             STEPS_ADDRESS,
@@ -122,7 +122,8 @@ def run_block(track: Track, setting: Setting, stage: Stage, plan: Plan) -> Block
     return BlockEnd(int(code), bodies, tuple(dict.fromkeys(str(w.message) for w in caught)))
 
 
-def _simulation(track: Track, setting: Setting, stage: Stage) -> Any:
+def simulation_at(track: Track, setting: Setting, stage: Stage) -> Any:
+    """Make the simulation that stands at ``track``, with the method and the forces of the stage."""
     simulation = new_simulation(setting.mass, track.state, track.tangent)
     simulation.integrator = str(stage.method)
     simulation.dt = track.clock[kernels.NEXT_STEP] if stage.adaptive else stage.step_d

@@ -20,7 +20,7 @@ from stabcheck.engines.rebound import kernels
 from stabcheck.engines.rebound.block import BlockEnd, Stage, run_block
 from stabcheck.engines.rebound.kernels import energy
 from stabcheck.engines.rebound.setting import Setting, setting_of
-from stabcheck.engines.rebound.summary import outcome_of
+from stabcheck.engines.rebound.summary import outcome_of, unusable
 from stabcheck.engines.rebound.track import Track, first_track, tracks_as_bytes, tracks_from_bytes
 from stabcheck.method import choose
 from stabcheck.outcome import Checkpoint, Finished, Message, Trust
@@ -60,8 +60,11 @@ def follow_draw(task: Task, plan: Plan) -> Iterator[Message]:
 
     The clock decides when a checkpoint is left and nothing else.
     """
+    if not _usable(task):
+        yield Finished(unusable(task))
+        return
     setting = setting_of(task, plan)
-    life = _resumed(task, setting, plan) if task.checkpoint else _begun(task, setting, plan)
+    life = _resumed(task, setting, plan) if task.checkpoint else begun(task, setting, plan)
     last = time.monotonic()
     while True:
         end = run_block(life.track, setting, life.stage, plan)
@@ -85,7 +88,13 @@ def follow_draw(task: Task, plan: Plan) -> Iterator[Message]:
             yield Checkpoint(task.number, _stored(life), share)
 
 
-def _begun(task: Task, setting: Setting, plan: Plan) -> Life:
+def _usable(task: Task) -> bool:
+    numbers = (task.mass_msun, task.radius_au, task.position_au, task.velocity_au_d, np.array(task.span_d))
+    return all(bool(np.all(np.isfinite(values))) for values in numbers) and task.span_d > 0.0
+
+
+def begun(task: Task, setting: Setting, plan: Plan) -> Life:
+    """Stand at the start of a draw, with the method that the rule chooses."""
     choice = choose(setting.mass, setting.a_au, setting.eccentricity, plan)
     stage = _stage(setting, plan, choice.method, setting.a_au, setting.eccentricity)
     track = first_track(setting, _first_tangent(task, setting, plan, stage), _first_adaptive_step(setting))
@@ -115,7 +124,7 @@ def _first_tangent(task: Task, setting: Setting, plan: Plan, stage: Stage) -> Ar
         return np.empty((0, 6))
     words = [uniforms(plan.seed, f"tangent {k}", task.number, 1)[0] for k in range(setting.state.size)]
     tangent = 2.0 * np.array(words).reshape(setting.state.shape) - 1.0
-    tangent[:, 3:] *= 2.0 * np.pi / float(np.nanmin(setting.period_d))
+    tangent[:, 3:] *= 2.0 * np.pi / float(np.min(setting.period_d))
     return tangent
 
 
@@ -129,15 +138,15 @@ def _trouble(life: Life, setting: Setting, plan: Plan, end: BlockEnd) -> Trust |
             return Trust.ENERGY
         if life.adaptive_steps + track.clock[kernels.ADAPTIVE_STEPS] > plan.evaluation_budget:
             return Trust.BUDGET
-        stalled = track.clock[kernels.NEXT_STEP] * 2048 < STALLED_SHARE * float(np.nanmin(setting.period_d))
+        stalled = track.clock[kernels.NEXT_STEP] * 2048 < STALLED_SHARE * float(np.min(setting.period_d))
         return Trust.BUDGET if stalled and end.code == kernels.UNDER_WAY else None
-    if track.worst[0] > plan.energy_bound * setting.largest_mass_ratio:
-        return Trust.ENERGY
     if life.map_steps + track.clock[kernels.MAP_STEPS] > plan.step_budget:
         return Trust.BUDGET
-    if end.code not in (kernels.CLOSE_PAIR, kernels.UNBOUND) and _steps_per_periastron(life, setting) < (
-        plan.fewest_steps_per_periastron
-    ):
+    if end.code in (kernels.CLOSE_PAIR, kernels.UNBOUND):
+        return None  # what this map did since the stored state is thrown away
+    if track.worst[0] > plan.energy_bound * setting.largest_mass_ratio:
+        return Trust.ENERGY
+    if _steps_per_periastron(life, setting) < plan.fewest_steps_per_periastron:
         return Trust.STEP_OUTGROWN
     return None
 

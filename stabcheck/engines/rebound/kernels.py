@@ -4,7 +4,8 @@ Everything is measured at the ends of steps and interpolated within them:
 
 * the distance of each pair by the cubic that fits both ends' relative positions and velocities, whenever the pair turns
   from approaching to receding within the step; in momentary mutual Hill radii,
-  ((m_i + m_j)/3M)^{1/3} (r_i + r_j)/2, with r the momentary distances from the centre of mass of everything inside;
+  ((m_i + m_j)/3M)^{1/3} (r_i + r_j)/2, with r the momentary distances from the centre of mass of everything inside (so
+  an approach is where the distance is smallest, not where its ratio to a Hill radius that changes along the orbit is);
 * osculating semi-major axis and eccentricity of each planet in Jacobi coordinates (in the order of the bodies), at every
   eighth step of a map;
 * MEGNO from differences of ln |δ| (``chaos.megno``).
@@ -346,20 +347,22 @@ def _look_at_pair(
 ) -> int:
     """Update the closest approach of one pair over the last step; say why to stop, if so."""
     when = t
-    if _receding(before, i, j) < 0.0 and _receding(now, i, j) >= 0.0:
+    turned = _receding(before, i, j) < 0.0 and _receding(now, i, j) >= 0.0
+    if turned:
         d2, share = _pair_closest(before, now, i, j, step)
         when = t - (1.0 - share) * step
     hill2 = scale * (radii[i] + radii[j]) ** 2
-    if scale > 0.0 and d2 < closest[RATIO2] * hill2:
+    code = UNDER_WAY
+    if touch > 0.0 and d2 <= touch * touch:
+        code = COLLIDED
+    elif d2 < limits[STOP_APPROACH] ** 2:
+        code = TOO_NEAR
+    elif d2 < limits[HANDOVER2] * hill2:
+        code = CLOSE_PAIR
+    if scale > 0.0 and (turned or code != UNDER_WAY) and d2 < closest[RATIO2] * hill2:
         closest[RATIO2], closest[DISTANCE], closest[WHEN] = d2 / hill2, math.sqrt(d2), when
         closest[FIRST_BODY], closest[SECOND_BODY] = i, j
-    if touch > 0.0 and d2 <= touch * touch:
-        return COLLIDED
-    if d2 < limits[STOP_APPROACH] ** 2:
-        return TOO_NEAR
-    if d2 < limits[HANDOVER2] * hill2:
-        return CLOSE_PAIR
-    return UNDER_WAY
+    return code
 
 
 @njit(error_model="numpy")

@@ -73,10 +73,7 @@ class Setting:
 
     def effective_period_d(self, a_au: Array, eccentricity: Array) -> float:
         """Give the shortest effective period at periastron for these axes and eccentricities (Wisdom 2015)."""
-        inside = np.cumsum(self.mass)[1:]
-        period = TWO_PI * np.sqrt(np.maximum(a_au, 0.0) ** 3 / (GM_SUN_AU3_D2 * inside))
-        e = np.minimum(eccentricity, 1.0)
-        return float(np.min(period * np.sqrt((1.0 - e) ** 3 / (1.0 + e))))
+        return float(np.min(_effective_periods_d(a_au, eccentricity, self.mass)))
 
 
 def setting_of(task: Task, plan: Plan) -> Setting:
@@ -85,15 +82,15 @@ def setting_of(task: Task, plan: Plan) -> Setting:
     mass = np.ascontiguousarray(task.mass_msun)
     a_au, eccentricity = _first_orbits(state, mass)
     inside = np.cumsum(mass)[1:]
-    bound_a = np.where(a_au > 0.0, a_au, np.nan)
-    period = TWO_PI * np.sqrt(bound_a**3 / (GM_SUN_AU3_D2 * inside))
+    period = TWO_PI * np.sqrt(np.abs(a_au) ** 3 / (GM_SUN_AU3_D2 * inside))
     strength = STRENGTH if plan.relativity else 0.0
-    intervals, interval_d = _grid(task.span_d, period, eccentricity, plan)
+    step = float(np.min(_effective_periods_d(a_au, eccentricity, mass))) / plan.steps_per_periastron
+    intervals, interval_d = _grid(task.span_d, step, plan.samples)
     ejection = plan.ejection_distance_au
     if math.isnan(ejection):
         ejection = plan.ejection_axes * float(np.max(np.abs(a_au)))
     planets = mass[1:] < STAR_LIKE * mass[0]
-    longest = float(np.nanmax(period[planets])) if np.any(planets) else float(np.nanmax(period))
+    longest = float(np.max(period[planets])) if np.any(planets) else float(np.max(period))
     return Setting(
         mass=mass,
         state=state,
@@ -130,12 +127,20 @@ def _least_orbit_energy(a_au: Array, mass: Array) -> float:
     return float(np.min(np.abs(0.5 * GM_SUN_AU3_D2 * mass[1:][heavy] * mass[0] / a_au[heavy])))
 
 
-def _grid(span_d: float, period_d: Array, eccentricity: Array, plan: Plan) -> tuple[int, float]:
-    """Sample grid: a power of two, at most the plan's, with a few steps of the map in each interval."""
-    e = np.minimum(eccentricity, 1.0)
-    step = float(np.nanmin(period_d * np.sqrt((1.0 - e) ** 3 / (1.0 + e)))) / plan.steps_per_periastron
-    most = max(int(span_d / (STEPS_PER_SAMPLE * step)), 1) if step > 0.0 else plan.samples
-    intervals = min(plan.samples, 1 << (most.bit_length() - 1))
+def _effective_periods_d(a_au: Array, eccentricity: Array, mass: Array) -> Array:
+    """Effective periods at periastron; an orbit that is open, or all but open, counts as one of e = 0.999.
+
+    Such an orbit is followed by an adaptive method, which takes from here only its first guess of a step.
+    """
+    e = np.minimum(eccentricity, 0.999)
+    period = TWO_PI * np.sqrt(np.abs(a_au) ** 3 / (GM_SUN_AU3_D2 * np.cumsum(mass)[1:]))
+    return np.asarray(period * np.sqrt((1.0 - e) ** 3 / (1.0 + e)))
+
+
+def _grid(span_d: float, step_d: float, samples: int) -> tuple[int, float]:
+    """Sample grid: a power of two, at most ``samples``, with a few steps of the map in each interval."""
+    most = max(int(min(span_d / (STEPS_PER_SAMPLE * step_d), samples)), 1)
+    intervals = 1 << (most.bit_length() - 1)
     return intervals, span_d / intervals
 
 

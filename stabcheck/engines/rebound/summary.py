@@ -83,6 +83,20 @@ def outcome_of(task: Task, plan: Plan, setting: Setting, life: "Life", end: Bloc
     )
 
 
+def unusable(task: Task) -> Outcome:
+    """Say that a draw cannot be followed, because a number of its state is not finite or its span is not positive."""
+    return Outcome(
+        number=task.number,
+        survival=Survival.UNKNOWN,
+        trust=Trust.NOT_FINITE,
+        time_d=0.0,
+        span_d=task.span_d,
+        method="",
+        step_d=float("nan"),
+        history="a number of the initial state is not finite, or the span is not positive",
+    )
+
+
 def _survival(code: int, trust: Trust) -> Survival:
     if trust is not Trust.OK:
         return Survival.UNKNOWN
