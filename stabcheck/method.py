@@ -14,7 +14,7 @@ HIGH_ECCENTRICITY = 0.9
 """From here on a map that resolves periastron takes a thousand steps an orbit, as many as IAS15 (measured)."""
 
 HIERARCHY = 5.0
-"""A companion star whose periastron is further out than this many axes of the next orbit inside is a small perturbation."""
+"""A companion star whose periastron is further out than this many axes of the next orbit inside perturbs weakly."""
 
 
 @dataclass(frozen=True, slots=True)

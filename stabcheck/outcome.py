@@ -91,7 +91,7 @@ class Outcome:
     megno: float = math.nan
     """Time-averaged MEGNO at the end of its run; 2 for quasi-periodic motion."""
     megno_time_d: float = math.nan
-    """How long MEGNO was followed (it closes at a hand-over)."""
+    """How long MEGNO was followed (it closes at a hand-over if it has called the draw chaotic by then)."""
     megno_wander: float = math.nan
     """Largest minus smallest averaged MEGNO over the last half of its run."""
     lyapunov_time_d: float = math.nan
@@ -99,8 +99,12 @@ class Outcome:
     drift: Array = field(default_factory=lambda: np.empty(0))
     """Relative change of each mean motion from the first half of the span to the second."""
     restarts: int = 0
+    handovers: int = 0
+    """How often a method that resolves encounters took over ..."""
+    returns: int = 0
+    """... and how often it gave the draw back to the map."""
     handover_time_d: float = math.nan
-    """Time of the stored state from which a method that resolves encounters went on."""
+    """Time of the stored state from which a method that resolves encounters first went on."""
     handover_why: str = ""
     map_steps: int = 0
     adaptive_steps: int = 0

@@ -50,14 +50,14 @@ class Plan:
     stop_approach_au: float = math.nan
     """Distance rule of the scenario: two planets nearer than this stop the draw (NaN: no such rule)."""
     stop_distance_au: float = math.nan
-    """Distance rule of the scenario: a body further from the barycentre than this stops the draw (NaN: no such rule)."""
+    """Distance rule of the scenario: a body further from the barycentre than this stops the draw (NaN: no rule)."""
     rearranged_share: float = 0.3
     samples: int = 2048
     """Intervals of the sample grid (a power of two); fewer when the span has too few steps."""
     energy_bound: float = 0.1
     """Largest relative energy error of a trusted map, in units of the largest planet-to-star mass ratio. The error of a
-    map grows with the mass ratio; at the step of the rule it stays below 0.02 of it on known systems (measured), and most
-    of that is the oscillation of a map that is not corrected, not an error that adds up."""
+    map grows with the mass ratio; at the step of the rule it stays below 0.02 of it on known systems (measured), and
+    most of that is the oscillation of a map that is not corrected, not an error that adds up."""
     adaptive_energy_bound: float = 1e-8
     """Largest relative energy error of a trusted adaptive method; IAS15 keeps 1e-12 unless something went wrong."""
     step_budget: int = 20_000_000_000

@@ -6,6 +6,7 @@ is the inner one. The coefficients sum to zero, so an angle does not depend on w
 """
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +17,7 @@ from stabcheck.kepler import wrapped_rad
 
 HIGHEST_ORDER, LARGEST_P = 4, 12
 NEARER_PER_ORDER = 3.0
-"""A resonance of one order more must be nearer by this factor to be named: its width falls with a power of e. Our rule."""
+"""A resonance of one order more must be nearer by this factor to be named: widths fall with a power of e. Our rule."""
 FURTHEST = 0.25
 """A pair whose period ratio is further than this from every candidate is near none."""
 
@@ -57,11 +58,11 @@ class Resonance:
         inner, outer = longitude_rad[:, 0], longitude_rad[:, 1]
         return wrapped_rad(a * inner + b * outer + c * apsis_rad[:, 0] + d * apsis_rad[:, 1])
 
-    def angle_name(self, k: int, inner: str, outer: str) -> str:
-        """Write angle ``k`` out, such as ``2λ_c − λ_b − ϖ_b``."""
-        parts = zip(self.coefficients(k), (f"λ_{inner}", f"λ_{outer}", f"ϖ_{inner}", f"ϖ_{outer}"), strict=True)
-        first, *rest = sorted((part for part in parts if part[0]), key=lambda part: part[0] < 0)
-        return _term(*first).removeprefix(" + ") + "".join(_term(*part) for part in rest)
+    def angle_text(self, k: int, symbols: Sequence[str]) -> str:
+        """Write angle ``k`` out with symbols for λ₁, λ₂, ϖ₁, ϖ₂, such as ``2λ_c − λ_b − ϖ_b``."""
+        terms = [(c, symbol) for c, symbol in zip(self.coefficients(k), symbols, strict=True) if c]
+        terms.sort(key=lambda term: term[0] < 0)  # p λ₂ is the only positive one
+        return "".join(_term(*term) for term in terms).removeprefix(" + ")
 
 
 def _term(coefficient: int, symbol: str) -> str:
@@ -80,8 +81,8 @@ def nearest_resonance(period_ratio: float) -> Resonance | None:
     Returns
     -------
     Resonance or None
-        Orders 1 to ``HIGHEST_ORDER``, p up to ``LARGEST_P``; of two, the one of lower order unless the other is nearer by
-        ``NEARER_PER_ORDER`` for each order. None if the ratio is not above 1 or nothing lies within ``FURTHEST``.
+        Orders 1 to ``HIGHEST_ORDER``, p up to ``LARGEST_P``; of two, the one of lower order unless the other is nearer
+        by ``NEARER_PER_ORDER`` for each order. None if the ratio is not above 1 or nothing lies within ``FURTHEST``.
     """
     if not period_ratio > 1.0:
         return None

@@ -43,6 +43,31 @@ class PairSeries:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Encounter:
+    """Two bodies step by step around the time that mattered.
+
+    Attributes
+    ----------
+    first, second : int
+        Bodies; 0 is the star.
+    at_d : float
+        The time that mattered.
+    time_d, distance_au, distance_hill : (step,) arrays
+        At the ends of steps; the last in mutual Hill radii, NaN against the star.
+    touch_au : float
+        Sum of the radii; 0 if one of the two is a point.
+    """
+
+    first: int
+    second: int
+    at_d: float
+    time_d: Array
+    distance_au: Array
+    distance_hill: Array
+    touch_au: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Series:
     """What one looks at along the way of a draw.
 
@@ -52,8 +77,8 @@ class Series:
     bodies : tuple of str
         Planets from the inside out, a companion star last.
     elements : Elements
-        (time, planet) arrays in the scenario's frame. Of an unbound orbit only axis (negative), eccentricity, inclination
-        and node are finite.
+        (time, planet) arrays in the scenario's frame. Of an unbound orbit only axis (negative), eccentricity,
+        inclination and node are finite.
     pairs : tuple of PairSeries
         Neighbours.
     """
@@ -120,6 +145,34 @@ def series_of(frame: str, bodies: tuple[str, ...], mass_msun: Array, time_d: Arr
             )
         )
     return Series(time_d=time_d, bodies=bodies, elements=elements, pairs=tuple(pairs))
+
+
+def encounter_of(
+    mass_msun: Array, radius_au: Array, pair: tuple[int, int], at_d: float, time_d: Array, state: Array
+) -> Encounter:
+    """Look at two bodies along steps that were all kept.
+
+    Parameters
+    ----------
+    mass_msun, radius_au : (body,) arrays
+    pair : (first, second)
+        Bodies, the inner first; 0 is the star.
+    at_d : float
+    time_d : (step,) array
+    state : (step, body, 6) array
+    """
+    first, second = pair
+    radii = float(radius_au[first]), float(radius_au[second])
+    hill = np.full(time_d.shape, np.nan) if first == 0 else distance_hill(mass_msun, state, first, second)
+    return Encounter(
+        first=first,
+        second=second,
+        at_d=at_d,
+        time_d=time_d,
+        distance_au=distance_au(state, first, second),
+        distance_hill=hill,
+        touch_au=sum(radii) if min(radii) > 0.0 else 0.0,
+    )
 
 
 def relative_states(frame: str, mass_msun: Array, state: Array) -> Array:

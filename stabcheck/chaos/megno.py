@@ -1,8 +1,9 @@
 """MEGNO from differences of the logarithm of a tangent vector, and what may be said from it.
 
 With δ the tangent vector, Y(t) = (2/t) ∫ (δ̇/δ) t' dt' and its running average ⟨Y⟩ = (1/t) ∫ Y dt' (Cincotta & Simó
-2000). The integral is summed from exact differences of ln |δ| over the steps, each weighted with the time of its middle:
-the instantaneous rate δ̇/δ sampled at step ends has a bias at periastron that makes regular eccentric orbits look chaotic.
+2000). The integral is summed from exact differences of ln |δ| over the steps, each weighted with the time of its
+middle: the instantaneous rate δ̇/δ sampled at step ends has a bias at periastron that makes regular eccentric orbits
+look chaotic.
 ⟨Y⟩ tends to 2 for quasi-periodic motion and to λt/2 for an exponent λ.
 
 References
@@ -18,7 +19,8 @@ from stabcheck.arrays import Array
 from stabcheck.outcome import Motion
 
 SETTLED_ABOVE = 0.5
-"""⟨Y⟩ of regular motion stays below 2 + this over the last half; common practice, no source. One-sided: below 2 is calm."""
+"""⟨Y⟩ of regular motion stays below 2 + this over the last half (common practice, no source). One-sided: below 2 is
+calm too."""
 
 SETTLED_WANDER = 0.3
 """Regular: ⟨Y⟩ moves by less than this over the last half of the run (slow secular terms leave ± 0.2; measured)."""

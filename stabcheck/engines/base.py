@@ -1,4 +1,4 @@
-"""The contract of an engine, written once; ``tests/unit/test_engine_contract.py`` runs over everything that signs it."""
+"""The contract of an engine, written once; ``tests/unit/test_engine_contract.py`` holds all that sign it to it."""
 
 from collections.abc import Iterable, Iterator
 from typing import Protocol

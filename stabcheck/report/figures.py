@@ -80,7 +80,7 @@ def write_figures(table: RunTable, folder: Path, *, plane: tuple[str, str] | Non
     named += [(f"parameters_{page}" if len(pages) > 1 else "parameters", one) for page, one in enumerate(pages, 1)]
     named += [("indicators", indicators(answer, orbits))]
     folder.mkdir(parents=True, exist_ok=True)  # only now: a plane that is not there leaves nothing behind
-    return [path for name, figure in named for path in _saved(figure, folder / name)]
+    return [path for name, figure in named for path in saved(figure, folder / name)]
 
 
 @styled
@@ -191,7 +191,7 @@ def before_and_after(answer: Answer, orbits: RunTable) -> "list[Figure]":
 def _panels(answer: Answer, orbits: RunTable, columns: Sequence[Column]) -> "Figure":
     across = min(PANELS_ACROSS, len(columns))
     down = math.ceil(len(columns) / across)
-    figure = _figure(PAGE_MM * across / PANELS_ACROSS if across > 1 else COLUMN_MM, 12.0 + PANEL_HEIGHT_MM * down)
+    figure = new_figure(PAGE_MM * across / PANELS_ACROSS if across > 1 else COLUMN_MM, 12.0 + PANEL_HEIGHT_MM * down)
     grid = figure.subplots(down, across, squeeze=False)
     for axes, column in zip(grid.flat, columns, strict=False):
         _panel(axes, column, orbits)
@@ -246,7 +246,7 @@ def _edges(values: Array) -> Array:
 @styled
 def indicators(answer: Answer, orbits: RunTable) -> "Figure":
     """MEGNO by fate, and the drift of the mean motions; how many draws have neither is said."""
-    figure = _figure(PAGE_MM, 75.0)
+    figure = new_figure(PAGE_MM, 75.0)
     left, right = figure.subplots(1, 2)
     measured = np.isfinite(orbits.outcome.drift).any(axis=1)
     drift = np.abs(np.nan_to_num(orbits.outcome.drift, nan=0.0)).max(axis=1, initial=0.0)
@@ -307,7 +307,8 @@ def _few_ticks(axes: "Axes", most: int = 5) -> None:
         axes.yaxis.set_major_locator(MaxNLocator(nbins=most))
 
 
-def _figure(width_mm: float, height_mm: float) -> "Figure":
+def new_figure(width_mm: float, height_mm: float) -> "Figure":
+    """Make an empty figure of this size."""
     # Not pyplot: it keeps every figure in a global list, and would pick a screen to draw on.
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
@@ -318,7 +319,7 @@ def _figure(width_mm: float, height_mm: float) -> "Figure":
 
 
 def _page(width_mm: float, height_mm: float) -> "tuple[Figure, Axes]":
-    figure = _figure(width_mm, height_mm)
+    figure = new_figure(width_mm, height_mm)
     return figure, figure.subplots()
 
 
@@ -329,7 +330,8 @@ def _nothing(figure: "Figure", axes: "Axes", why: str) -> "Figure":
 
 
 @styled
-def _saved(figure: "Figure", stem: Path) -> list[Path]:
+def saved(figure: "Figure", stem: Path) -> list[Path]:
+    """Write a figure as PNG and PDF."""
     png, pdf = stem.with_suffix(".png"), stem.with_suffix(".pdf")
     # No date and no program: the same table gives the same bytes.
     figure.savefig(png, dpi=DOTS_PER_INCH, metadata={"Software": None})

@@ -52,6 +52,18 @@ ALL_FILL, LIVING_LINE, REGULAR_LINE = "#cfcfcf", "#0b3c5d", "#e07b00"
 """Of all orbits, of those that live, of those that are regular."""
 HATCHES = {"survived": ("#0b3c5d", ""), "broken": ("#e9b7a6", "////"), "unknown": ("#ffffff", "....")}
 
+PLANET_LOOKS: tuple[tuple[str, Any], ...] = (
+    ("#0b3c5d", "-"),
+    ("#e07b00", "-"),
+    ("#7f78c8", "-"),
+    ("#3f9b6c", "-"),
+    ("#b8402a", (0, (4, 1.5))),
+    ("#4fa9d6", (0, (4, 1.5))),
+    ("#8c6d1f", (0, (4, 1.5))),
+    ("#606060", (0, (1, 1))),
+)
+"""Colour and dashes of the planets, from the inside out."""
+
 
 def inches(width_mm: float, height_mm: float) -> tuple[float, float]:
     """Size of a figure."""

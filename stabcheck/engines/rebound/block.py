@@ -5,6 +5,7 @@ same steps bit for bit, whichever integrator, and no hidden state of an integrat
 predictor at a block's start, which costs a few iterations in two thousand steps.
 """
 
+import math
 import warnings
 from dataclasses import dataclass
 from typing import Any
@@ -43,6 +44,9 @@ class Stage:
     steps_per_interval: int
     """0 for an adaptive method."""
     watch_close_pairs: bool
+    """Give the draw up when two planets come close or an orbit opens."""
+    quiet_d: float = math.inf
+    """An adaptive method that took over may give the draw back when no pair was close for this long."""
 
     @property
     def adaptive(self) -> bool:
@@ -66,7 +70,10 @@ def limits_of(setting: Setting, stage: Stage, plan: Plan) -> Array:
     limits[kernels.STEPS_PER_INTERVAL] = stage.steps_per_interval
     limits[kernels.INTERVAL_D] = setting.interval_d
     limits[kernels.INTERVALS] = setting.intervals
-    limits[kernels.HANDOVER2] = plan.handover_hill**2 if stage.watch_close_pairs else 0.0
+    watched = stage.watch_close_pairs or math.isfinite(stage.quiet_d)
+    limits[kernels.HANDOVER2] = plan.handover_hill**2 if watched else 0.0
+    limits[kernels.GIVE_UP] = 1.0 if stage.watch_close_pairs else 0.0
+    limits[kernels.QUIET_D] = stage.quiet_d
     limits[kernels.STOP_APPROACH] = np.nan_to_num(plan.stop_approach_au, nan=0.0)
     limits[kernels.STOP_DISTANCE2] = np.nan_to_num(plan.stop_distance_au, nan=np.inf) ** 2
     limits[kernels.EJECTION2] = setting.ejection_au**2

@@ -6,8 +6,8 @@ Everything is measured at the ends of steps and interpolated within them:
   from approaching to receding within the step; in momentary mutual Hill radii,
   ((m_i + m_j)/3M)^{1/3} (r_i + r_j)/2, with r the momentary distances from the centre of mass of everything inside (so
   an approach is where the distance is smallest, not where its ratio to a Hill radius that changes along the orbit is);
-* osculating semi-major axis and eccentricity of each planet in Jacobi coordinates (in the order of the bodies), at every
-  eighth step of a map;
+* osculating semi-major axis and eccentricity of each planet in Jacobi coordinates (in the order of the bodies), at
+  every eighth step of a map;
 * MEGNO from differences of ln |δ| (``chaos.megno``).
 
 Layout of the small arrays is given by the constants below; ``track`` gives them names.
@@ -17,7 +17,7 @@ import math
 from typing import Any
 
 import numpy as np
-from numba import carray, njit
+from numba import njit
 
 from stabcheck.chaos.megno import next_sums
 from stabcheck.constants import GM_SUN_AU3_D2
@@ -28,35 +28,36 @@ from stabcheck.engines.rebound.library import (
     STEP_WORD,
     VARIATIONS_WORD,
 )
-from stabcheck.engines.rebound.memory import call_steps, doubles_at, words_at
+from stabcheck.engines.rebound.memory import call_steps, carray, doubles_at, words_at
 
 # clock: where the draw stands
 INTERVAL, INSIDE, NEXT_STEP, MAP_STEPS, ADAPTIVE_STEPS = 0, 1, 2, 3, 4
 SUM_Y, SUM_MEAN, MEGNO_TIME, LN_DELTA = 5, 6, 7, 8
-CLOCK_SIZE = 9
+LAST_CLOSE = 9
+CLOCK_SIZE = 10
 # closest: the smallest distance seen
 RATIO2, DISTANCE, FIRST_BODY, SECOND_BODY, WHEN = 0, 1, 2, 3, 4
 CLOSEST_SIZE = 5
 # extremes of a planet
 INVERSE_A_LEAST, INVERSE_A_MOST, E2_LEAST, E2_MOST = 0, 1, 2, 3
 # limits: what does not change while a stage runs
-STEP_D, STEPS_PER_INTERVAL, INTERVAL_D, INTERVALS, HANDOVER2, STOP_APPROACH, STOP_DISTANCE2, EJECTION2, SPEED_WEIGHT = (
-    range(9)
-)
-LIMITS_SIZE = 9
+STEP_D, STEPS_PER_INTERVAL, INTERVAL_D, INTERVALS, HANDOVER2, STOP_APPROACH, STOP_DISTANCE2 = range(7)
+EJECTION2, SPEED_WEIGHT, GIVE_UP, QUIET_D = range(7, 11)
+LIMITS_SIZE = 11
 
 # why the loop came back
 UNDER_WAY, SPAN_DONE, CLOSE_PAIR, UNBOUND, COLLIDED, HIT_STAR, EJECTED, TOO_NEAR, TOO_FAR = range(9)
 
 MEASURE_EVERY = 8
-"""Axes, eccentricities and the tangent vector are measured at every eighth step of a map and at every step of an adaptive
-method. Pairs are looked at after every step. MEGNO is summed from differences of ln |δ|, which are exact over any stretch."""
+"""Axes, eccentricities and the tangent vector are measured at every eighth step of a map and at every step of an
+adaptive method. Pairs are looked at after every step. MEGNO is summed from differences of ln |δ|, which are exact over
+any stretch."""
 
-_next_sums = njit(next_sums)
+_next_sums: Any = njit(next_sums)
 
 
 @njit(error_model="numpy")
-def closest_within(r0: Any, v0: Any, r1: Any, v1: Any, step: float) -> tuple[float, float]:
+def closest_within(r0: Any, v0: Any, r1: Any, v1: Any, step: float) -> Any:
     """Find the smallest distance within a step from the cubic through both ends.
 
     Returns the squared distance and the share of the step at which it is reached. The pair must approach at the start
@@ -78,12 +79,12 @@ def closest_within(r0: Any, v0: Any, r1: Any, v1: Any, step: float) -> tuple[flo
 
 
 @njit(error_model="numpy")
-def _square(r: Any) -> float:
+def _square(r: Any) -> Any:
     return r[0] * r[0] + r[1] * r[1] + r[2] * r[2]
 
 
 @njit(error_model="numpy")
-def _cubic(r0: Any, v0: Any, r1: Any, v1: Any, step: float, s: float) -> tuple[float, float]:
+def _cubic(r0: Any, v0: Any, r1: Any, v1: Any, step: float, s: float) -> Any:
     h00, h10 = (1.0 + 2.0 * s) * (1.0 - s) ** 2, s * (1.0 - s) ** 2
     h01, h11 = s * s * (3.0 - 2.0 * s), s * s * (s - 1.0)
     g00, g10 = 6.0 * s * (s - 1.0), (1.0 - s) * (1.0 - 3.0 * s)
@@ -99,7 +100,7 @@ def _cubic(r0: Any, v0: Any, r1: Any, v1: Any, step: float, s: float) -> tuple[f
 
 
 @njit(error_model="numpy")
-def _pair_closest(before: Any, now: Any, i: int, j: int, step: float) -> tuple[float, float]:
+def _pair_closest(before: Any, now: Any, i: int, j: int, step: float) -> Any:
     r0, v0 = before[j, 0:3] - before[i, 0:3], before[j, 3:6] - before[i, 3:6]
     r1, v1 = now[j, 0:3] - now[i, 0:3], now[j, 3:6] - now[i, 3:6]
     return closest_within(r0, v0, r1, v1, step)
@@ -155,7 +156,7 @@ def mean_longitudes(now: Any, mass: Any, basis: Any, out: Any) -> None:
 
 
 @njit(error_model="numpy")
-def _mean_longitude(d: Any, mu: float) -> float:
+def _mean_longitude(d: Any, mu: float) -> Any:
     """λ = true longitude − (f − M), the true longitude counted as Ω + (ω + f) and continuous through i = 0."""
     hx, hy, hz = d[1] * d[5] - d[2] * d[4], d[2] * d[3] - d[0] * d[5], d[0] * d[4] - d[1] * d[3]
     h2 = hx * hx + hy * hy + hz * hz
@@ -180,8 +181,8 @@ def _mean_longitude(d: Any, mu: float) -> float:
 
 
 @njit(error_model="numpy")
-def energy(now: Any, mass: Any, relativity_strength: float) -> float:
-    """Total energy, with the relativistic potential −(A/2) m_star² m / r² where ``relativity_strength`` is A, else 0."""
+def energy(now: Any, mass: Any, relativity_strength: float) -> Any:
+    """Total energy, with the relativistic potential −(A/2) m_star² m / r² if ``relativity_strength`` is A (0: none)."""
     total = 0.0
     for i in range(mass.shape[0]):
         total += 0.5 * mass[i] * (now[i, 3] ** 2 + now[i, 4] ** 2 + now[i, 5] ** 2)
@@ -194,7 +195,7 @@ def energy(now: Any, mass: Any, relativity_strength: float) -> float:
 
 
 @njit(error_model="numpy")
-def _unbound(now: Any, mass: Any, body: int) -> bool:
+def _unbound(now: Any, mass: Any, body: int) -> Any:
     """Has this body enough energy to leave the centre of mass of all the others?"""
     rest = 0.0
     d = now[body, 0:6].copy()
@@ -210,7 +211,7 @@ def _unbound(now: Any, mass: Any, body: int) -> bool:
 
 
 @njit(error_model="numpy")
-def _length(tangent: Any, bodies: int, speed_weight: float) -> float:
+def _length(tangent: Any, bodies: int, speed_weight: float) -> Any:
     """ln |δ|, velocities weighted with the inner period over 2π so that both halves count alike."""
     square = 0.0
     for k in range(bodies):
@@ -220,9 +221,7 @@ def _length(tangent: Any, bodies: int, speed_weight: float) -> float:
 
 
 @njit(error_model="numpy")
-def _look_at_planets(
-    elements: Any, extremes: Any, departure: Any, axis_limits: Any, ordered: Any, now_d: float
-) -> bool:
+def _look_at_planets(elements: Any, extremes: Any, departure: Any, axis_limits: Any, ordered: Any, now_d: float) -> Any:
     """Update extremes and the first departure; say whether an extreme moved."""
     moved = False
     departed = False
@@ -264,9 +263,10 @@ def _zones(
 
     The smallest distance that matters is the closest so far, the hand-over or the touch. A pair further away than that
     plus what both can move in one step at their fastest need not be looked at (upper triangle of ``zones``, squared);
-    one that does not turn within the step matters only within the hand-over and the touch (lower triangle). A pair whose orbits
-    leave more room than that between the outer one's periastron and the inner one's apastron is left out altogether,
-    until an orbit changes. Row 0 holds the star's touch. An adaptive method takes steps of any length: look at all.
+    one that does not turn within the step matters only within the hand-over and the touch (lower triangle). A pair
+    whose orbits leave more room than that between the outer one's periastron and the inner one's apastron is left out
+    altogether, until an orbit changes. Row 0 holds the star's touch. An adaptive method takes steps of any length: look
+    at all.
     """
     count = 0
     for j in range(1, mass.shape[0]):
@@ -292,7 +292,7 @@ def _zones(
 
 
 @njit(error_model="numpy")
-def _reach(mass: Any, extremes: Any, body: int) -> tuple[float, float]:
+def _reach(mass: Any, extremes: Any, body: int) -> Any:
     """Largest distance and speed on the widest and fastest orbit seen so far, a tenth added; infinite if unbound."""
     e = math.sqrt(extremes[body - 1, E2_MOST])
     if not extremes[body - 1, INVERSE_A_LEAST] > 0.0 or not e < 1.0:
@@ -305,7 +305,7 @@ def _reach(mass: Any, extremes: Any, body: int) -> tuple[float, float]:
 
 
 @njit(error_model="numpy")
-def _nearest(extremes: Any, body: int) -> float:
+def _nearest(extremes: Any, body: int) -> Any:
     """Smallest periastron distance of the smallest and most eccentric orbit seen so far."""
     return (1.0 - math.sqrt(extremes[body - 1, E2_MOST])) / extremes[body - 1, INVERSE_A_MOST]
 
@@ -323,7 +323,7 @@ def _copy(particles: Any, state: Any) -> None:
 
 
 @njit(error_model="numpy")
-def _receding(state: Any, i: int, j: int) -> float:
+def _receding(state: Any, i: int, j: int) -> Any:
     total = 0.0
     for axis in range(3):
         total += (state[j, axis] - state[i, axis]) * (state[j, 3 + axis] - state[i, 3 + axis])
@@ -366,7 +366,7 @@ def _look_at_pair(
 
 
 @njit(error_model="numpy")
-def _any_inside(before: Any, now: Any, zones: Any, pairs: Any, count: int) -> bool:
+def _any_inside(before: Any, now: Any, zones: Any, pairs: Any, count: int) -> Any:
     """Is there a pair worth a closer look? Few arguments: handing an array to a function that is not inlined costs."""
     for pair in range(count):
         i, j = pairs[pair, 0], pairs[pair, 1]
@@ -395,8 +395,12 @@ def _look_at_pairs(
     t: float,
     step: float,
 ) -> int:
-    """Look at every pair that is inside its zone; say why to stop, if so, and write the bodies to ``event``."""
+    """Look at every pair that is inside its zone; say why to stop, if so, and write the bodies to ``event``.
+
+    A pair that is merely close must not hide one that touches in the same step.
+    """
     fresh = False
+    found = UNDER_WAY
     for j in range(2, mass.shape[0]):
         x, y, z = now[j, 0], now[j, 1], now[j, 2]
         for i in range(1, j):
@@ -411,9 +415,11 @@ def _look_at_pairs(
                 fresh = True
             code = _look_at_pair(before, now, i, j, d2, radii, pair_scale[i, j], touch[i, j], limits, closest, t, step)
             if code != UNDER_WAY:
+                found = code
                 event[0], event[1] = i, j
+            if code != UNDER_WAY and code != CLOSE_PAIR:
                 return code
-    return UNDER_WAY
+    return found
 
 
 @njit(error_model="numpy")
@@ -430,7 +436,7 @@ def _note_distances(now: Any, mass: Any, pair_scale: Any, closest: Any, radii: A
 
 
 @njit(error_model="numpy")
-def _touches_star(before: Any, now: Any, body: int, touch: float, step: float) -> bool:
+def _touches_star(before: Any, now: Any, body: int, touch: float, step: float) -> Any:
     """Did this body touch the star within the last step?"""
     d2 = 0.0
     for axis in range(3):
@@ -450,7 +456,7 @@ def _look_around(now: Any, mass: Any, elements: Any, limits: Any, event: Any) ->
             return TOO_FAR
         if far2 > limits[EJECTION2] and _unbound(now, mass, body):
             return EJECTED
-        if limits[HANDOVER2] > 0.0 and not elements[body - 1, 0] > 0.0:
+        if limits[GIVE_UP] > 0.0 and not elements[body - 1, 0] > 0.0:
             return UNBOUND
     return UNDER_WAY
 
@@ -503,7 +509,8 @@ def advance(
     Returns
     -------
     int
-        One of this module's codes; ``UNDER_WAY`` if ``most_steps`` were taken.
+        One of this module's codes; ``UNDER_WAY`` if ``most_steps`` were taken, or at a sample if no pair was close for
+        ``limits[QUIET_D]``.
     """
     bodies = mass.shape[0]
     head = carray(doubles_at(simulation), 16)
@@ -551,6 +558,10 @@ def advance(
             code = _look_at_pairs(
                 state, particles, mass, zones, pair_scale, touch, limits, closest, radii, elements, event, t, step
             )
+            if code == CLOSE_PAIR:
+                clock[LAST_CLOSE] = t
+                if limits[GIVE_UP] == 0.0:
+                    code = UNDER_WAY
         for body in range(1, bodies):
             if (
                 code == UNDER_WAY
@@ -589,4 +600,6 @@ def advance(
             if clock[INTERVAL] == limits[INTERVALS]:
                 _note_distances(state, mass, pair_scale, closest, radii, elements, t)
                 return SPAN_DONE
+            if t - clock[LAST_CLOSE] >= limits[QUIET_D]:
+                return UNDER_WAY
     return UNDER_WAY

@@ -55,7 +55,7 @@ def check_layout() -> None:
     simulation = new_simulation(np.array([1.0, 0.5]), state, np.array([]))
     view = particles_view(simulation)
     same = np.array_equal(view[:, POSITION : POSITION + 6], state) and np.array_equal(view[:, MASS], [1.0, 0.5])
-    if not same or PARTICLE_DOUBLES * DOUBLE != ctypes.sizeof(rebound.Particle):
+    if not same or ctypes.sizeof(rebound.Particle) != PARTICLE_DOUBLES * DOUBLE:
         raise PlatformError(
             "REBOUND's particles do not lie in memory as expected",
             where="engine rebound",
@@ -109,5 +109,5 @@ def _view(pointer: Any, count: int) -> Array:
     address = ctypes.cast(pointer, ctypes.c_void_p).value
     if address is None:
         return np.empty((0, PARTICLE_DOUBLES))
-    buffer = (ctypes.c_double * (PARTICLE_DOUBLES * count)).from_address(address)
+    buffer: Any = (ctypes.c_double * (PARTICLE_DOUBLES * count)).from_address(address)
     return np.frombuffer(buffer, dtype=np.float64).reshape(count, PARTICLE_DOUBLES)

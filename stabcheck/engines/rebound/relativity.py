@@ -1,8 +1,8 @@
 """Relativity as a potential, in the motion and in its tangent, as a compiled callback of REBOUND.
 
-The potential of Nobili & Roxburgh (1986), φ = −3 (GM)²/(c² r²) a unit of mass with r from the star, moves the periastron
-at the rate of general relativity, 6πGM/(c² a (1−e²)) an orbit. It leaves out the change of the mean motion by
-order GM/(c² a), which decides no stability. Each planet's reaction on the star is included, so momentum is conserved.
+The potential of Nobili & Roxburgh (1986), φ = −3 (GM)²/(c² r²) a unit of mass with r from the star, moves the
+periastron at the rate of general relativity, 6πGM/(c² a (1−e²)) an orbit. It leaves out the change of the mean motion
+by order GM/(c² a), which decides no stability. Each planet's reaction on the star is included, so momentum is conserved.
 Additional forces of other kinds do not reach REBOUND's variational particles, and a MEGNO with them would be
 meaningless; this callback adds the linearised force to the variations itself.
 
@@ -17,7 +17,7 @@ Nobili, A. & Roxburgh, I. W. (1986), IAU Symposium 114, 105.
 
 from typing import Any
 
-from numba import carray, cfunc, njit
+from numba import cfunc, njit
 
 from stabcheck.constants import C_AU_D, GM_SUN_AU3_D2
 from stabcheck.engines.rebound.library import (
@@ -30,7 +30,7 @@ from stabcheck.engines.rebound.library import (
     VARIATIONS_COUNT_WORD,
     VARIATIONS_WORD,
 )
-from stabcheck.engines.rebound.memory import doubles_at, words_at
+from stabcheck.engines.rebound.memory import carray, doubles_at, words_at
 
 STRENGTH = 6.0 * GM_SUN_AU3_D2**2 / C_AU_D**2
 """A of the module's text for a star of one solar mass, in au⁴/d²."""

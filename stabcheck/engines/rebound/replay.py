@@ -6,29 +6,33 @@ block must end on the bits with which the next begins; ``Path.exact`` says wheth
 """
 
 import ctypes
+import math
 import warnings
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 import rebound
 
-from stabcheck.arrays import Array, Flags
+from stabcheck.arrays import Array
 from stabcheck.engines.rebound import kernels
 from stabcheck.engines.rebound.block import Stage, simulation_at
-from stabcheck.engines.rebound.follow import begun, follow_draw
+from stabcheck.engines.rebound.changes import begun
+from stabcheck.engines.rebound.follow import follow_draw
 from stabcheck.engines.rebound.library import POSITION, particles_view
+from stabcheck.engines.rebound.life import restored
 from stabcheck.engines.rebound.setting import Setting, setting_of
-from stabcheck.engines.rebound.track import Track, tracks_from_bytes
+from stabcheck.engines.rebound.track import Track
 from stabcheck.outcome import Checkpoint, Finished
-from stabcheck.plan import Method, Plan, Task
+from stabcheck.plan import Plan, Task
 
 EVERY_BLOCK_S = 1e-9
 """Less than any block takes."""
 
-Wanted = Callable[[Array], Flags]
-"""Says of times, in days, which lie where every step is to be kept."""
+Window = tuple[float, float]
+"""First and last time, in days, between which every step is kept."""
+NO_WINDOW: Window = (math.inf, -math.inf)
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,15 +93,15 @@ class Replay:
                 found.append(Turn(time_d=leg.begin_d, method=method, step_d=step_d, state=leg.track.state))
         return tuple(found)
 
-    def path(self, grid_d: Array, every_step: Wanted | None = None) -> Path:
-        """Keep the first step that ends at or after each time of the grid, and every step where asked.
+    def path(self, grid_d: Array, window: Window = NO_WINDOW) -> Path:
+        """Keep the first step that ends at or after each time of the grid, and every step within a window.
 
         Parameters
         ----------
         grid_d : (time,) array
             Increasing, in days.
-        every_step : callable, optional
-            Takes times in days and says which steps to keep besides.
+        window : (first, last)
+            In days.
 
         Returns
         -------
@@ -105,14 +109,17 @@ class Replay:
         """
         times, states, exact = [0.0], [self.setting.state.copy()], True
         for place, leg in enumerate(self.legs):
-            last = leg.track.state
-            for time_d, state, kept in _walked(leg, self.setting, grid_d, every_step):
+            last, is_last = leg.track.state, place + 1 == len(self.legs)
+            for time_d, state, kept in _walked(leg, self.setting, grid_d, window):
                 last = state
                 if kept:
                     times.append(time_d)
                     states.append(state)
-            if place + 1 < len(self.legs):
+            if not is_last:
                 exact = exact and np.array_equal(last, self.legs[place + 1].track.state)
+            elif not kept:  # the last step ends a rounding before the last time of the grid
+                times.append(time_d)
+                states.append(state)
         return Path(time_d=np.array(times), state=np.array(states), exact=bool(exact))
 
 
@@ -153,13 +160,10 @@ def replay_of(task: Task, plan: Plan) -> Replay:
 
 
 def _checkpoint(message: Checkpoint, setting: Setting) -> tuple[Stage, Track, tuple[int, int]]:
-    head: dict[str, Any]
-    head, (track, *_) = tracks_from_bytes(message.blob, setting.intervals + 1)
-    stage = Stage(
-        Method(head["method"]), head["step_d"], head["steps_per_interval"], head["watch_close_pairs"]
-    )
-    map_steps = int(head["map_steps"] + track.clock[kernels.MAP_STEPS])
-    return stage, track, (map_steps, int(head["adaptive_steps"] + track.clock[kernels.ADAPTIVE_STEPS]))
+    life = restored(message.blob, setting)
+    clock, story = life.track.clock, life.story
+    map_steps = int(story.map_steps + clock[kernels.MAP_STEPS])
+    return life.stage, life.track, (map_steps, int(story.adaptive_steps + clock[kernels.ADAPTIVE_STEPS]))
 
 
 def _slim(track: Track) -> Track:
@@ -168,64 +172,58 @@ def _slim(track: Track) -> Track:
     return replace(track.copy(), longitudes=nothing, ln_deltas=nothing, megnos=nothing)
 
 
-def _walked(leg: Leg, setting: Setting, grid_d: Array, every: Wanted | None) -> Iterator[tuple[float, Array, bool]]:
+def _walked(leg: Leg, setting: Setting, grid_d: Array, window: Window) -> Iterator[tuple[float, Array, bool]]:
     """Take the steps of a block again; give time, state and whether to keep it, at least at the block's end."""
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # the outcome brings the warnings of the same steps
         simulation = simulation_at(leg.track, setting, leg.stage)
         walk = _walked_adaptive if leg.stage.adaptive else _walked_map
-        yield from walk(simulation, leg, setting, grid_d, every)
+        yield from walk(simulation, leg, setting, grid_d, window)
 
 
 def _walked_map(
-    simulation: Any, leg: Leg, setting: Setting, grid_d: Array, every: Wanted | None
+    simulation: Any, leg: Leg, setting: Setting, grid_d: Array, window: Window
 ) -> Iterator[tuple[float, Array, bool]]:
     clock = leg.track.clock
     number = int(clock[kernels.INSIDE]) + np.arange(leg.steps + 1)
     interval, inside = np.divmod(number, leg.stage.steps_per_interval)
     ends_d = (clock[kernels.INTERVAL] + interval) * setting.interval_d + inside * leg.stage.step_d
-    kept = _first_at_or_after(ends_d, grid_d)
-    if every is not None:
-        kept |= every(ends_d)
-    kept[0] = False  # it was kept as the end of the block before
+    # The first end of a step at or after a time of the grid, and all within the window. The start is the end of the
+    # block before, and was kept there.
+    due = np.diff(np.searchsorted(grid_d, ends_d, side="right")) > 0
+    kept = np.concatenate([[False], due | ((window[0] <= ends_d[1:]) & (ends_d[1:] <= window[1]))])
     done = 0
-    for place in np.union1d(np.flatnonzero(kept), [leg.steps]):
-        _advance(simulation, int(place) - done)
-        done = int(place)
+    for place in np.union1d(np.flatnonzero(kept), [leg.steps]).tolist():
+        _advance(simulation, place - done)
+        done = place
         yield float(ends_d[place]), _state(simulation), bool(kept[place])
 
 
 def _walked_adaptive(
-    simulation: Any, leg: Leg, setting: Setting, grid_d: Array, every: Wanted | None
+    simulation: Any, leg: Leg, setting: Setting, grid_d: Array, window: Window
 ) -> Iterator[tuple[float, Array, bool]]:
     """Steps end on the sample grid of the engine, as in the compiled loop."""
-    clock = leg.track.clock
-    interval, inside, kept_step = clock[kernels.INTERVAL], clock[kernels.INSIDE], clock[kernels.NEXT_STEP]
-    before_d = leg.begin_d
+    clock, interval_d = leg.track.clock, setting.interval_d
+    interval, inside = float(clock[kernels.INTERVAL]), float(clock[kernels.INSIDE])
+    next_step = float(clock[kernels.NEXT_STEP])
+    due = iter(grid_d[np.searchsorted(grid_d, leg.begin_d, side="right") :].tolist())
+    next_due = next(due, math.inf)
     for number in range(1, leg.steps + 1):
-        remaining = setting.interval_d - inside
-        simulation.dt = min(kept_step, remaining)
+        remaining = interval_d - inside
+        simulation.dt = min(next_step, remaining)
         _advance(simulation, 1)
         step = simulation.dt_last_done
         inside += step
-        kept_step = kept_step if step == remaining and kept_step > remaining else simulation.dt
-        now_d = float(interval * setting.interval_d + inside)
+        if not (step == remaining and next_step > remaining):
+            next_step = simulation.dt
+        now_d = interval * interval_d + inside
         if step == remaining:
             interval, inside = interval + 1.0, 0.0
-        kept = _any_between(grid_d, before_d, now_d) or (every is not None and bool(every(np.array([now_d]))[0]))
+        kept = next_due <= now_d or window[0] <= now_d <= window[1]
         if kept or number == leg.steps:
             yield now_d, _state(simulation), kept
-        before_d = now_d
-
-
-def _first_at_or_after(ends_d: Array, grid_d: Array) -> Flags:
-    """Which ends of steps are the first at or after some time of the grid; the first end stands for what was before."""
-    due = np.searchsorted(grid_d, ends_d, side="right")
-    return np.concatenate([[False], np.diff(due) > 0])
-
-
-def _any_between(grid_d: Array, before_d: float, now_d: float) -> bool:
-    return bool(np.searchsorted(grid_d, now_d, side="right") > np.searchsorted(grid_d, before_d, side="right"))
+        while next_due <= now_d:
+            next_due = next(due, math.inf)
 
 
 def _advance(simulation: Any, steps: int) -> None:

@@ -26,8 +26,8 @@ class Setting:
     state : (body, 6) array, au and au/d
         At the start.
     pair_scale : (body, body) array
-        ((m_i + m_j)/3M)^{2/3}/4: times (r_i + r_j)² the square of the momentary mutual Hill radius. 0 where a pair holds
-        a star-like body: it has no mutual Hill radius that would mean anything.
+        ((m_i + m_j)/3M)^{2/3}/4: times (r_i + r_j)² the square of the momentary mutual Hill radius. 0 where a pair
+        holds a star-like body: it has no mutual Hill radius that would mean anything.
     touch : (body, body) array, au
         Sum of the radii of two bodies that both have one, else 0.
     a_au, eccentricity, period_d : (planet,) array
@@ -148,7 +148,7 @@ def _pair_scale(mass: Array) -> Array:
     pair = mass[:, None] + mass[None, :]
     scale = np.cbrt(pair / (3.0 * mass[0])) ** 2 / 4.0
     scale[pair > STAR_LIKE * mass[0]] = 0.0
-    return scale
+    return np.asarray(scale)
 
 
 def _touch(radius_au: Array) -> Array:
@@ -156,7 +156,7 @@ def _touch(radius_au: Array) -> Array:
     touch = np.where(both, radius_au[:, None] + radius_au[None, :], 0.0)
     star = radius_au[0]
     touch[0, 1:] = touch[1:, 0] = np.where(star > 0.0, star + radius_au[1:], 0.0)
-    return touch
+    return np.asarray(touch)
 
 
 def _upper(a_au: Array, share: float) -> Array:
@@ -166,7 +166,7 @@ def _upper(a_au: Array, share: float) -> Array:
 def _ordered(a_au: Array, mass: Array) -> Array:
     """Neighbours whose order is watched: those that start further apart than a mutual Hill radius, in order."""
     hill = np.cbrt((mass[1:-1] + mass[2:]) / (3.0 * mass[0])) * 0.5 * (a_au[:-1] + a_au[1:])
-    return (a_au[1:] - a_au[:-1] > hill).astype(np.float64)
+    return np.asarray(a_au[1:] - a_au[:-1] > hill, dtype=np.float64)
 
 
 def _invariable_basis(state: Array, mass: Array) -> Array:

@@ -1,6 +1,6 @@
 """From the end of a draw to its outcome."""
 
-from typing import TYPE_CHECKING
+from dataclasses import replace
 
 import numpy as np
 
@@ -9,12 +9,11 @@ from stabcheck.chaos.drift import drift
 from stabcheck.chaos.megno import Convergence, convergence
 from stabcheck.engines.rebound import kernels
 from stabcheck.engines.rebound.block import BlockEnd
+from stabcheck.engines.rebound.changes import steps_per_periastron
+from stabcheck.engines.rebound.life import Life
 from stabcheck.engines.rebound.setting import Setting
-from stabcheck.outcome import Ending, Outcome, Survival, Trust
-from stabcheck.plan import Plan, Task
-
-if TYPE_CHECKING:
-    from stabcheck.engines.rebound.follow import Life
+from stabcheck.outcome import Ending, Motion, Outcome, Survival, Trust
+from stabcheck.plan import Task
 
 ENDINGS = {
     kernels.COLLIDED: Ending.COLLIDED,
@@ -25,7 +24,7 @@ ENDINGS = {
 }
 
 
-def outcome_of(task: Task, plan: Plan, setting: Setting, life: "Life", end: BlockEnd, trust: Trust) -> Outcome:
+def outcome_of(task: Task, setting: Setting, life: Life, end: BlockEnd, trust: Trust) -> Outcome:
     """Say what a draw came to.
 
     Parameters
@@ -39,11 +38,12 @@ def outcome_of(task: Task, plan: Plan, setting: Setting, life: "Life", end: Bloc
     -------
     Outcome
     """
-    track, stage = life.track, life.stage
+    track, stage, story = life.track, life.stage, life.story
     ending = ENDINGS.get(end.code, Ending.NONE) if trust is Trust.OK else Ending.NONE
     chaos = _chaos(life, setting)
     survival = _survival(end.code, trust)
-    inverse_most, inverse_least = track.extremes[:, kernels.INVERSE_A_MOST], track.extremes[:, kernels.INVERSE_A_LEAST]
+    extremes = life.extremes()
+    inverse_most, inverse_least = extremes[:, kernels.INVERSE_A_MOST], extremes[:, kernels.INVERSE_A_LEAST]
     closest = track.closest
     return Outcome(
         number=task.number,
@@ -57,8 +57,8 @@ def outcome_of(task: Task, plan: Plan, setting: Setting, life: "Life", end: Bloc
         bodies=tuple(body for body in end.bodies if body) if ending is not Ending.NONE else (),
         method=str(stage.method),
         step_d=float("nan") if stage.adaptive else stage.step_d,
-        energy_error=float(np.maximum(life.map_errors[0], track.worst[0])),
-        orbit_energy_error=float(np.maximum(life.map_errors[1], track.worst[1])),
+        energy_error=float(np.maximum(story.energy_error, track.worst[0])),
+        orbit_energy_error=float(np.maximum(story.orbit_energy_error, track.worst[1])),
         closest_hill=float(np.sqrt(closest[kernels.RATIO2])) if np.isfinite(closest[kernels.RATIO2]) else float("nan"),
         closest_au=float(closest[kernels.DISTANCE]),
         closest_pair=_pair(closest),
@@ -66,20 +66,22 @@ def outcome_of(task: Task, plan: Plan, setting: Setting, life: "Life", end: Bloc
         departure_time_d=float(track.departure[0]),
         a_least_au=1.0 / inverse_most,
         a_most_au=np.where(inverse_least > 0.0, 1.0 / np.where(inverse_least > 0.0, inverse_least, 1.0), np.inf),
-        e_least=np.sqrt(track.extremes[:, kernels.E2_LEAST]),
-        e_most=np.sqrt(track.extremes[:, kernels.E2_MOST]),
-        fewest_steps_per_periastron=_fewest_steps(life, setting),
+        e_least=np.sqrt(extremes[:, kernels.E2_LEAST]),
+        e_most=np.sqrt(extremes[:, kernels.E2_MOST]),
+        fewest_steps_per_periastron=float("nan") if stage.adaptive else steps_per_periastron(life, setting),
         megno=chaos.megno,
         megno_time_d=_megno_time_d(life, setting),
         megno_wander=chaos.wander,
         lyapunov_time_d=chaos.lyapunov_time_d,
         drift=_drift(life, setting, survival),
-        restarts=life.restarts,
-        handover_time_d=life.handover_time_d,
-        handover_why=life.handover_why,
-        map_steps=int(life.map_steps + track.clock[kernels.MAP_STEPS]),
-        adaptive_steps=int(life.adaptive_steps + track.clock[kernels.ADAPTIVE_STEPS]),
-        history="; ".join(life.history),
+        restarts=story.restarts,
+        handovers=story.handovers,
+        returns=story.returns,
+        handover_time_d=story.handover_time_d,
+        handover_why=story.handover_why,
+        map_steps=int(story.map_steps + track.clock[kernels.MAP_STEPS]),
+        adaptive_steps=int(story.adaptive_steps + track.clock[kernels.ADAPTIVE_STEPS]),
+        history="; ".join(story.history),
     )
 
 
@@ -103,18 +105,18 @@ def _survival(code: int, trust: Trust) -> Survival:
     return Survival.SURVIVED if code == kernels.SPAN_DONE else Survival.BROKEN
 
 
-def _chaos(life: "Life", setting: Setting) -> Convergence:
-    until = int(life.track.clock[kernels.INTERVAL]) if life.megno_until < 0 else life.megno_until
+def _chaos(life: Life, setting: Setting) -> Convergence:
+    closed = life.story.megno_until
+    until = int(life.track.clock[kernels.INTERVAL]) if closed < 0 else closed
     samples = slice(1, until + 1)
-    times = setting.interval_d * np.arange(1, until + 1)
+    times: Array = setting.interval_d * np.arange(1.0, until + 1.0)
     found = convergence(times, life.track.megnos[samples], life.track.ln_deltas[samples])
-    if life.megno_until >= 0 and found.motion.value == "regular":
-        # it looked regular up to a close approach that a regular orbit would not have had: what came after was not measured
-        return Convergence(found.megno, found.wander, type(found.motion).UNSETTLED, float("nan"))
+    if closed >= 0 and found.motion is Motion.REGULAR:  # what came after was not measured
+        return replace(found, motion=Motion.UNSETTLED)
     return found
 
 
-def _megno_time_d(life: "Life", setting: Setting) -> float:
+def _megno_time_d(life: Life, setting: Setting) -> float:
     if not np.any(np.isfinite(life.track.megnos)):
         return float("nan")
     return float(life.track.clock[kernels.MEGNO_TIME])
@@ -126,15 +128,7 @@ def _pair(closest: Array) -> tuple[int, int]:
     return int(closest[kernels.FIRST_BODY]), int(closest[kernels.SECOND_BODY])
 
 
-def _fewest_steps(life: "Life", setting: Setting) -> float:
-    if life.stage.adaptive:
-        return float("nan")
-    extremes = life.track.extremes
-    a_au = 1.0 / extremes[:, kernels.INVERSE_A_MOST]
-    return setting.effective_period_d(a_au, np.sqrt(extremes[:, kernels.E2_MOST])) / life.stage.step_d
-
-
-def _drift(life: "Life", setting: Setting, survival: Survival) -> Array:
+def _drift(life: Life, setting: Setting, survival: Survival) -> Array:
     planets = setting.mass.size - 1
     if survival is not Survival.SURVIVED:
         return np.full(planets, np.nan)

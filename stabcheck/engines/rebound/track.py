@@ -1,9 +1,10 @@
-"""Where a draw stands: all that the time loop changes, as arrays that can be copied, stored and compared bit for bit."""
+"""Where a draw stands: all that the time loop changes, as arrays that can be copied, stored and compared exactly."""
 
 import json
 import struct
 from collections.abc import Iterable
 from dataclasses import dataclass, fields
+from typing import Any
 
 import numpy as np
 
@@ -109,7 +110,7 @@ def _until(track: Track, name: str, reached: int) -> Array:
     return array[:reached] if name in ("longitudes", "ln_deltas", "megnos") else array
 
 
-def tracks_from_bytes(blob: bytes, samples: int) -> tuple[dict[str, object], list[Track]]:
+def tracks_from_bytes(blob: bytes, samples: int) -> tuple[dict[str, Any], list[Track]]:
     """Undo ``tracks_as_bytes``.
 
     Raises
