@@ -1,4 +1,4 @@
-"""Which integration method a draw begins with, and why. The rule is one function, so that it can be explained and tested."""
+"""Which integration method a draw begins with, and why: one rule in one function, to be explained and tested."""
 
 from dataclasses import dataclass
 

@@ -58,6 +58,8 @@ class Plan:
     """Largest relative energy error of a trusted map, in units of the largest planet-to-star mass ratio. The error of a
     map grows with the mass ratio; at the step of the rule it stays below 0.02 of it on known systems (measured), and
     most of that is the oscillation of a map that is not corrected, not an error that adds up."""
+    trace_energy_bound: float = 1e-4
+    """The same for TRACE, absolute: its coordinates leave 2e-5 at periastron whatever the mass (measured)."""
     adaptive_energy_bound: float = 1e-8
     """Largest relative energy error of a trusted adaptive method; IAS15 keeps 1e-12 unless something went wrong."""
     step_budget: int = 20_000_000_000
@@ -81,6 +83,7 @@ class Plan:
             "rearranged_share",
             "samples",
             "energy_bound",
+            "trace_energy_bound",
             "adaptive_energy_bound",
             "step_budget",
             "evaluation_budget",

@@ -20,7 +20,7 @@ from stabcheck.engines.rebound.life import Life, restored, stored
 from stabcheck.engines.rebound.setting import Setting, setting_of
 from stabcheck.engines.rebound.summary import outcome_of, unusable
 from stabcheck.outcome import Checkpoint, Finished, Message, Trust
-from stabcheck.plan import Plan, Task
+from stabcheck.plan import Method, Plan, Task
 
 STALLED_SHARE = 1e-6
 """An adaptive block that advances by less than this share of the shortest period is stuck (two bodies all but on top of
@@ -87,7 +87,8 @@ def _trouble(life: Life, setting: Setting, plan: Plan, end: BlockEnd) -> Trust:
         return Trust.ENERGY if track.worst[0] > plan.adaptive_energy_bound else Trust.OK
     if end.code in GIVEN_UP:
         return Trust.OK  # what this map did since the stored state is thrown away
-    if track.worst[0] > plan.energy_bound * setting.largest_mass_ratio:
+    bound = plan.energy_bound * setting.largest_mass_ratio
+    if track.worst[0] > (plan.trace_energy_bound if stage.method is Method.TRACE else bound):
         return Trust.ENERGY
     outgrown = steps_per_periastron(life, setting) < plan.fewest_steps_per_periastron
     return Trust.STEP_OUTGROWN if outgrown else Trust.OK

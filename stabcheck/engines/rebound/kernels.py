@@ -22,6 +22,7 @@ from numba import njit
 from stabcheck.chaos.megno import next_sums
 from stabcheck.constants import GM_SUN_AU3_D2
 from stabcheck.engines.rebound.library import (
+    COLLISION_STATUS,
     LAST_STEP_WORD,
     PARTICLE_DOUBLES,
     PARTICLES_WORD,
@@ -447,6 +448,19 @@ def _touches_star(before: Any, now: Any, body: int, touch: float, step: float) -
 
 
 @njit(error_model="numpy")
+def _nearest_touch(now: Any, touch: Any, event: Any) -> int:
+    """Say which bodies REBOUND found in collision: of those that can touch, the pair nearest to touching."""
+    nearest = math.inf
+    for j in range(1, now.shape[0]):
+        for i in range(j):
+            gap = math.sqrt(_square(now[j, 0:3] - now[i, 0:3])) - touch[i, j]
+            if touch[i, j] > 0.0 and gap < nearest:
+                nearest = gap
+                event[0], event[1] = i, j
+    return HIT_STAR if event[0] == 0.0 else COLLIDED
+
+
+@njit(error_model="numpy")
 def _look_around(now: Any, mass: Any, elements: Any, limits: Any, event: Any) -> int:
     """Has a body gone too far, or left, or (under a map that hands over) opened its orbit?"""
     for body in range(1, mass.shape[0]):
@@ -542,10 +556,10 @@ def advance(
             clock[INSIDE] += step
             clock[NEXT_STEP] = kept if step == remaining and kept > remaining else head[STEP_WORD]
             sampled = step == remaining
-            measured = True
+            measured, halted = True, False
             t = clock[INTERVAL] * limits[INTERVAL_D] + clock[INSIDE]
         else:
-            call_steps(steps_address, simulation, 1)
+            halted = call_steps(steps_address, simulation, 1) == COLLISION_STATUS
             clock[MAP_STEPS] += 1.0
             clock[INSIDE] += 1.0
             sampled = clock[INSIDE] == limits[STEPS_PER_INTERVAL]
@@ -562,6 +576,8 @@ def advance(
                 clock[LAST_CLOSE] = t
                 if limits[GIVE_UP] == 0.0:
                     code = UNDER_WAY
+        if halted:
+            code = _nearest_touch(particles, touch, event)
         for body in range(1, bodies):
             if (
                 code == UNDER_WAY

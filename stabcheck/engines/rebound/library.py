@@ -24,6 +24,7 @@ PARTICLE_DOUBLES = ctypes.sizeof(rebound.Particle) // DOUBLE
 POSITION = rebound.Particle.x.offset // DOUBLE
 ACCELERATION = rebound.Particle.ax.offset // DOUBLE
 MASS = rebound.Particle.m.offset // DOUBLE
+RADIUS = rebound.Particle.r.offset // DOUBLE
 
 TIME_WORD = rebound.Simulation.t.offset // DOUBLE
 STEP_WORD = rebound.Simulation.dt.offset // DOUBLE
@@ -32,6 +33,9 @@ BODIES_WORD = rebound.Simulation.N.offset // DOUBLE
 PARTICLES_WORD = rebound.Simulation._particles.offset // DOUBLE
 VARIATIONS_COUNT_WORD = rebound.Simulation.N_var.offset // DOUBLE
 VARIATIONS_WORD = rebound.Simulation._particles_var.offset // DOUBLE
+
+COLLISION_STATUS = 7
+"""What ``reb_simulation_steps`` returns when a collision halted it."""
 
 STEPS_ADDRESS: int = ctypes.cast(rebound.clibrebound.reb_simulation_steps, ctypes.c_void_p).value or 0
 

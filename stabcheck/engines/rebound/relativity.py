@@ -2,8 +2,8 @@
 
 The potential of Nobili & Roxburgh (1986), φ = −3 (GM)²/(c² r²) a unit of mass with r from the star, moves the
 periastron at the rate of general relativity, 6πGM/(c² a (1−e²)) an orbit. It leaves out the change of the mean motion
-by order GM/(c² a), which decides no stability. Each planet's reaction on the star is included, so momentum is conserved.
-Additional forces of other kinds do not reach REBOUND's variational particles, and a MEGNO with them would be
+by order GM/(c² a), which decides no stability. Each planet's reaction on the star is included, so momentum is
+conserved. Additional forces of other kinds do not reach REBOUND's variational particles, and a MEGNO with them would be
 meaningless; this callback adds the linearised force to the variations itself.
 
 With r⃗ = x⃗ − x⃗_star, A = 6 (GM)²/c² and the tangent δr⃗:

@@ -28,6 +28,7 @@ class Setting:
     pair_scale : (body, body) array
         ((m_i + m_j)/3M)^{2/3}/4: times (r_i + r_j)² the square of the momentary mutual Hill radius. 0 where a pair
         holds a star-like body: it has no mutual Hill radius that would mean anything.
+    radius : (body,) array, au
     touch : (body, body) array, au
         Sum of the radii of two bodies that both have one, else 0.
     a_au, eccentricity, period_d : (planet,) array
@@ -51,6 +52,7 @@ class Setting:
     mass: Array
     state: Array
     pair_scale: Array
+    radius: Array
     touch: Array
     a_au: Array
     eccentricity: Array
@@ -95,6 +97,7 @@ def setting_of(task: Task, plan: Plan) -> Setting:
         mass=mass,
         state=state,
         pair_scale=_pair_scale(mass),
+        radius=np.ascontiguousarray(task.radius_au),
         touch=_touch(task.radius_au),
         a_au=a_au,
         eccentricity=eccentricity,
