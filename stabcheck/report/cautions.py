@@ -4,11 +4,12 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from stabcheck.chaos.megno import SETTLED_CYCLES
 from stabcheck.report.constrained import FEWEST_EFFECTIVE, ConstrainedTable
 from stabcheck.report.spans import Spans
 from stabcheck.report.table_of_draws import RunTable
 
-FEW_CYCLES = 3.0
+FEW_CYCLES = SETTLED_CYCLES
 """A span of fewer slow secular cycles has not shown what eccentricities come to."""
 
 
@@ -37,7 +38,10 @@ def _span(spans: Spans) -> Iterator[str]:
     if not np.isfinite(spans.stellar_ages.middle):
         yield "The star's age is not given, so the span is not compared with it."
     if spans.secular_cycles.least < FEW_CYCLES:
-        yield f"The span is only {spans.secular_cycles.least:.2g} cycles of the slowest secular mode."
+        yield (
+            f"The span is only {spans.secular_cycles.least:.2g} cycles of the slowest secular mode: a draw that looks "
+            f"calm is called regular from {FEW_CYCLES:g} cycles on and unsettled before."
+        )
     yield (
         "MEGNO alone neither condemns nor acquits: chaotic draws survived their span, "
         "and draws near 2 may still turn out chaotic later."

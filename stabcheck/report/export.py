@@ -38,7 +38,7 @@ NUMBERS: tuple[tuple[str, str, float], ...] = (
 )
 """Numbers of an outcome: name without its internal unit, published unit, factor."""
 PLANETS = (("a_least_au", "au"), ("a_most_au", "au"), ("e_least", ""), ("e_most", ""), ("drift", ""))
-COUNTS = ("restarts", "map_steps", "adaptive_steps")
+COUNTS = ("restarts", "handovers", "returns", "map_steps", "adaptive_steps")
 
 
 @dataclass(frozen=True, slots=True)

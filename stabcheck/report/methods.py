@@ -61,11 +61,12 @@ def bibtex(answer: Answer) -> str:
 
 
 def _methods(answer: Answer) -> tuple[str, ...]:
-    """Methods in use at an end, and those the plan began with where all such draws were handed over."""
+    """Methods in use at an end, and those that began, or resolved encounters in between, and gave the draw over."""
     begun = answer.facts.plan.get("method", "auto")
-    handed = bool(answer.numerics.handovers) and answer.numerics.map_steps > 0
+    handed = bool(answer.numerics.handovers)
     first = begun if begun != "auto" else "whfast"
-    return tuple(dict.fromkeys([*answer.numerics.methods, *([first] if handed else [])]))
+    taken = [*([first] if answer.numerics.map_steps > 0 else []), "ias15"] if handed else []
+    return tuple(dict.fromkeys([*answer.numerics.methods, *taken]))
 
 
 def _cite(*steps: str) -> str:
@@ -156,7 +157,9 @@ def _handovers(answer: Answer) -> str:
     reasons = ", ".join(f"{reason}: {number}" for reason, number in numerics.handovers.items())
     return (
         f"Where two planets came within {plan['handover_hill']:g} mutual Hill radii, or an orbit opened, a draw was "
-        f"followed on from a stored state before it by a method that resolves encounters ({reasons})."
+        f"followed on by IAS15 {_cite('method ias15')} from a stored state at least one outer orbit before, and given "
+        f"back to the map after ten quiet outer orbits (draws: {reasons}; {numerics.times_handed} times in all, "
+        f"{numerics.times_returned} given back)."
     )
 
 

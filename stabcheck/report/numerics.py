@@ -23,6 +23,8 @@ class Numerics:
         Draws by method in use at the end, by trust, by reason of a hand-over, by number of restarts.
     step_d, energy_error, orbit_energy_error, steps_per_periastron : tuple of float
         Smallest, median, 90 %, 99 % and largest; energy errors of trusted draws only.
+    times_handed, times_returned : int
+        How often, over all draws, a method that resolves encounters took over, and how often it gave back.
     measured_megno, measured_drift : int
         Draws with a MEGNO, with a frequency drift.
     """
@@ -31,6 +33,8 @@ class Numerics:
     trust: Mapping[str, int]
     handovers: Mapping[str, int]
     restarts: Mapping[str, int]
+    times_handed: int
+    times_returned: int
     step_d: tuple[float, ...]
     energy_error: tuple[float, ...]
     orbit_energy_error: tuple[float, ...]
@@ -50,6 +54,8 @@ def numerics_of(table: RunTable) -> Numerics:
         trust=counted(out.trust),
         handovers=counted(out.handover_why),
         restarts=counted(out.restarts[out.restarts > 0].astype(np.str_)),
+        times_handed=int(out.handovers.sum()),
+        times_returned=int(out.returns.sum()),
         step_d=ranked(out.step_d),
         energy_error=ranked(np.abs(out.energy_error[trusted])),
         orbit_energy_error=ranked(np.abs(out.orbit_energy_error[trusted])),

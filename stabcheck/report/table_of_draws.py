@@ -88,6 +88,8 @@ class OutcomeColumns:
     lyapunov_time_d: PerDraw
     drift: DrawPlanet
     restarts: Integers
+    handovers: Integers
+    returns: Integers
     handover_time_d: PerDraw
     handover_why: Words
     map_steps: Integers
@@ -193,7 +195,7 @@ def _taken(columns: Any, rows: Any) -> dict[str, Any]:
 
 
 WORDS = ("survival", "ending", "trust", "motion", "method", "handover_why")
-COUNTS = ("restarts", "map_steps", "adaptive_steps")
+COUNTS = ("restarts", "handovers", "returns", "map_steps", "adaptive_steps")
 PLANETS = ("a_least_au", "a_most_au", "e_most", "e_least", "drift")
 
 

@@ -197,7 +197,9 @@ def _numerics(answer: Answer) -> Iterator[str]:
     found = answer.numerics
     rows = [("numerics", "")]
     rows += [("  method at the end", _listed(found.methods)), ("  trust", _listed(found.trust))]
-    rows += [("  hand-overs", _listed(found.handovers) or "none"), ("  restarts", _listed(found.restarts) or "none")]
+    times = f"; in all {found.times_handed} times, given back {found.times_returned}" if found.handovers else ""
+    rows += [("  handed over", (_listed(found.handovers) or "none") + times)]
+    rows += [("  restarts", _listed(found.restarts) or "none")]
     ranked = (
         ("  step [d]", found.step_d),
         ("  |energy error|", found.energy_error),

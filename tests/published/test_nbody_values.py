@@ -37,14 +37,16 @@ def test_jupiter_and_saturn_have_a_megno_of_two():
     """<Y> = 2.004 after 1e5 yr (recomputed, Wisdom-Holman, P_J/40); here 2e4 yr, and 0.05 for the shorter run."""
     found = outcome_of(sun_jupiter_saturn(20_000.0))
     assert found.megno == pytest.approx(2.0, abs=0.05)
-    assert (found.survival, found.motion) == (Survival.SURVIVED, Motion.REGULAR)
+    assert found.survival is Survival.SURVIVED
+    assert found.motion is Motion.UNSETTLED  # a twentieth of the slowest secular cycle proves nothing
 
 
 def test_control_with_thirty_times_the_mass_the_pair_is_not_regular():
     task = sun_jupiter_saturn(20_000.0)
     heavier = task.mass_msun * np.array([1.0, 30.0, 30.0])
     fields = {name: getattr(task, name) for name in task.__slots__} | {"mass_msun": heavier}
-    assert outcome_of(Task(**fields)).motion is not Motion.REGULAR
+    heavy = outcome_of(Task(**fields))
+    assert heavy.survival is not Survival.SURVIVED or heavy.megno > 2.1
 
 
 def test_halving_the_step_cuts_the_energy_error_fourfold():

@@ -332,6 +332,25 @@ def _receding(state: Any, i: int, j: int) -> Any:
 
 
 @njit(error_model="numpy")
+def _never_nearer(before: Any, now: Any, i: int, j: int, step: float) -> float:
+    """Give the square of a distance that the cubic of `closest_within` does not fall below: cheap, and close to it.
+
+    A cubic lies within the hull of its four control points r0, r0 + v0 h/3, r1 − v1 h/3, r1, so its projection on any
+    direction is at least the smallest of theirs. The direction is that of the middle of the step.
+    """
+    n2 = n_r0 = n_p0 = n_p1 = n_r1 = 0.0
+    for axis in range(3):
+        r0, r1 = before[j, axis] - before[i, axis], now[j, axis] - now[i, axis]
+        p0 = r0 + (before[j, 3 + axis] - before[i, 3 + axis]) * (step / 3.0)
+        p1 = r1 - (now[j, 3 + axis] - now[i, 3 + axis]) * (step / 3.0)
+        n = p0 + p1
+        n2 += n * n
+        n_r0, n_p0, n_p1, n_r1 = n_r0 + n * r0, n_p0 + n * p0, n_p1 + n * p1, n_r1 + n * r1
+    least = min(min(n_r0, n_p0), min(n_p1, n_r1))
+    return 0.999999 * least * least / n2 if least > 0.0 else 0.0  # less than by rounding could be said too much
+
+
+@njit(error_model="numpy")
 def _look_at_pair(
     before: Any,
     now: Any,
@@ -349,10 +368,13 @@ def _look_at_pair(
     """Update the closest approach of one pair over the last step; say why to stop, if so."""
     when = t
     turned = _receding(before, i, j) < 0.0 and _receding(now, i, j) >= 0.0
+    hill2 = scale * (radii[i] + radii[j]) ** 2
     if turned:
+        matters2 = max(limits[HANDOVER2], closest[RATIO2] if scale > 0.0 else 0.0) * hill2
+        if _never_nearer(before, now, i, j, step) > max(matters2, touch * touch, limits[STOP_APPROACH] ** 2):
+            return UNDER_WAY
         d2, share = _pair_closest(before, now, i, j, step)
         when = t - (1.0 - share) * step
-    hill2 = scale * (radii[i] + radii[j]) ** 2
     code = UNDER_WAY
     if touch > 0.0 and d2 <= touch * touch:
         code = COLLIDED

@@ -6,7 +6,8 @@ import numpy as np
 
 from stabcheck.arrays import Array
 from stabcheck.chaos.drift import drift
-from stabcheck.chaos.megno import Convergence, convergence
+from stabcheck.chaos.megno import SETTLED_CYCLES, Convergence, convergence
+from stabcheck.criteria.secular import slowest_apsidal_period_d
 from stabcheck.engines.rebound import kernels
 from stabcheck.engines.rebound.block import BlockEnd
 from stabcheck.engines.rebound.changes import steps_per_periastron
@@ -111,9 +112,16 @@ def _chaos(life: Life, setting: Setting) -> Convergence:
     samples = slice(1, until + 1)
     times: Array = setting.interval_d * np.arange(1.0, until + 1.0)
     found = convergence(times, life.track.megnos[samples], life.track.ln_deltas[samples])
-    if closed >= 0 and found.motion is Motion.REGULAR:  # what came after was not measured
+    measured_all = closed < 0  # else what came after was not measured
+    if found.motion is Motion.REGULAR and not (measured_all and _long_enough(setting, times[-1])):
         return replace(found, motion=Motion.UNSETTLED)
     return found
+
+
+def _long_enough(setting: Setting, time_d: float) -> bool:
+    """Have the slowest secular terms had time to show? Not asked where theory has no slowest mode to offer."""
+    slowest_d = slowest_apsidal_period_d(setting.mass[:1], setting.mass[None, 1:], setting.a_au[None, :])[0]
+    return not np.isfinite(slowest_d) or time_d >= SETTLED_CYCLES * float(slowest_d)
 
 
 def _megno_time_d(life: Life, setting: Setting) -> float:
