@@ -67,15 +67,15 @@ def corner() -> Columns:
         name="b",
         period_d=(311.0, 1.1),
         longitude_deg=(48.0, 3.0),
-        semi_amplitude_m_s=(96.0, 4.0),
+        semi_amplitude_m_s=(71.0, 3.5),
         e_cos=(0.16, 0.09),
         e_sin=(0.10, 0.09),
     )
     c = Planet(
         name="c",
-        period_d=(742.0, 9.0),
+        period_d=(838.0, 10.0),
         longitude_deg=(205.0, 6.0),
-        semi_amplitude_m_s=(88.0, 6.0),
+        semi_amplitude_m_s=(62.0, 5.0),
         e_cos=(-0.27, 0.12),
         e_sin=(0.12, 0.12),
     )

@@ -4,6 +4,8 @@ Exit codes are part of the promise: 0 done; 1 finished, but more than a stated s
 2 wrong use or bad input; 130 interrupted, the same command goes on. (70 is a defect of stabcheck, with a traceback.)
 """
 
+import contextlib
+import errno
 import json
 import os
 import sys
@@ -40,27 +42,26 @@ def main(arguments: Sequence[str] | None = None) -> int:
     words = list(sys.argv[1:] if arguments is None else arguments)
     try:
         refuse_platform(sys.platform)
-        code = _carried_out(words or ["--help"])
-        sys.stdout.flush()
-        return code
+        return _carried_out(words or ["--help"])
     except BrokenPipeError:
         silence_stdout()
         return EXIT_DONE
     except KeyboardInterrupt as stop:  # of a screen it says how far the run is
-        click.echo(f"\n{stop}" if str(stop) else "\nstopped", err=True)
+        _tell(f"\n{stop}" if str(stop) else "\nstopped")
         return EXIT_INTERRUPTED
     except click.ClickException as error:
-        error.show()
+        with contextlib.suppress(OSError):
+            error.show()
         return EXIT_WRONG_USE
     except StabcheckError as error:
-        click.echo(f"Error: {error}", err=True)
+        _tell(f"Error: {error}")
         return EXIT_WRONG_USE
     except OSError as error:
-        click.echo(f"Error: {_refused_by_system(error)}", err=True)
+        _tell(f"Error: {_refused_by_system(error)}")
         return EXIT_WRONG_USE
     except Exception:  # the last stop: a crash must not look like exit code 1, which has a meaning
         traceback.print_exc()
-        click.echo("This is a defect of stabcheck, not of your input. Please report it with the lines above.", err=True)
+        _tell("This is a defect of stabcheck, not of your input. Please report it with the lines above.")
         return EXIT_DEFECT
 
 
@@ -96,6 +97,22 @@ def _carried_out(words: list[str]) -> int:
     return code if isinstance(code, int) else EXIT_DONE
 
 
+def _say(text: str, nl: bool = True) -> None:
+    """Write to standard output; whoever has seen enough, or closed the terminal, does not change the exit code."""
+    try:
+        click.echo(text, nl=nl)
+    except OSError as gone:
+        if gone.errno not in (errno.EPIPE, errno.EIO):  # a full disk is another matter
+            raise
+        silence_stdout()
+
+
+def _tell(text: str) -> None:
+    """Write to standard error; that nobody is left to read it (a closed terminal) must not change the exit code."""
+    with contextlib.suppress(OSError):
+        click.echo(text, err=True)
+
+
 def _refused_by_system(error: OSError) -> StabcheckError:
     return StabcheckError(
         error.strerror or str(error),
@@ -127,7 +144,7 @@ def preview(scenario: Path, draws: int, wants_json: bool) -> None:
     from stabcheck.preview import understood
 
     seen = understood(scenario, draws=draws)
-    click.echo(_as_json(seen.as_dict()) if wants_json else seen.as_text(), nl=wants_json)
+    _say(_as_json(seen.as_dict()) if wants_json else seen.as_text(), nl=wants_json)
 
 
 @commands.command()
@@ -151,19 +168,23 @@ def screen(scenario: Path, draws: int, workers: int | None, run_file: Path | Non
     from stabcheck.screen import screen as follow_all
 
     run = follow_all(scenario, draws=draws, run_file=run_file, workers=workers, progress=ProgressLine())
-    click.echo(run.as_text())
+    _say(run.as_text())
     return EXIT_UNTRUSTED if run.untrusted_share > untrusted_share else EXIT_DONE
 
 
 @commands.command()
 @click.argument("scenario", type=EXISTING)
-@click.option("--draw", type=click.IntRange(min=0), required=True, help="Number of the draw.")
-@click.option("--out", type=FOLDER, help="Folder for the time series and plots.")
-def follow(scenario: Path, draw: int, out: Path | None) -> None:
-    """Follow one draw of SCENARIO in detail: time series, resonant angles, plots."""
+@click.option("--draw", type=click.IntRange(min=0), help="Number of the draw.")
+@click.option("--central", is_flag=True, help="Follow the central values instead of a draw.")
+@click.option("--out", type=FOLDER, help="Folder of the results; SCENARIO's name with _draw_N, here, if not given.")
+@click.option("--json", "wants_json", is_flag=True, help="Print JSON instead of text.")
+def follow(scenario: Path, draw: int | None, central: bool, out: Path | None, wants_json: bool) -> None:
+    """Follow one draw of SCENARIO in detail: time series, resonant angles, plots, initial state."""
     from stabcheck.follow import follow as follow_one
 
-    click.echo(follow_one(scenario, draw=draw, out=out).as_text())
+    folder = out or Path(f"{scenario.stem}_central" if draw is None else f"{scenario.stem}_draw_{draw}")
+    seen = follow_one(scenario, draw=draw, out=folder, central=central)
+    _say(_as_json(seen.as_dict()) if wants_json else seen.as_text())
 
 
 @commands.command()
@@ -176,7 +197,7 @@ def report(run: Path, out: Path | None, plane: tuple[str, str] | None, wants_jso
     from stabcheck.report.page import report as make_report
 
     made = make_report(run, out=out, plane=plane)
-    click.echo(_as_json(made.answer.as_dict()) if wants_json else made.as_text(), nl=wants_json)
+    _say(_as_json(made.answer.as_dict()) if wants_json else made.as_text(), nl=wants_json)
 
 
 @commands.command()
@@ -186,7 +207,7 @@ def export(run: Path, out: Path) -> None:
     """Write one row a draw of RUN, with units: parameters, weight, verdict and numbers."""
     from stabcheck.report.export import export as write_table
 
-    click.echo(f"wrote {write_table(run, out)} draws to {out}")
+    _say(f"wrote {write_table(run, out)} draws to {out}")
 
 
 @commands.command()
@@ -198,7 +219,7 @@ def scenarios(name: str | None, folder: Path) -> None:
 
     if name is not None:
         for file in shipped.copy(name, folder):
-            click.echo(str(file))
+            _say(str(file))
         return
     for one in shipped.listed():
-        click.echo(f"{one.name:<20} {one.title}")
+        _say(f"{one.name:<20} {one.title}")

@@ -5,6 +5,7 @@ z points away from the observer, so a receding star has positive velocity. Times
 
 import signal
 import threading
+import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -89,7 +90,8 @@ def nbody_velocity_m_s(states: States, row: int, time_d: Array, smallest_step_d:
     Returns
     -------
     (time,) array
-        In m/s, positive away from the observer; NaN where the state is not finite.
+        In m/s, positive away from the observer; NaN where the state is not finite, and throughout if IAS15 warns (a
+        close encounter below the smallest step): what it gives then is not to be relied on.
     """
     times = np.asarray(time_d, dtype=np.float64)
     velocity = np.full(times.shape, np.nan)
@@ -100,10 +102,13 @@ def nbody_velocity_m_s(states: States, row: int, time_d: Array, smallest_step_d:
         sim = simulation(states, row)
         sim.integrator = "ias15"
         sim.integrator.min_dt = smallest_step_d
-        with interruptible():
+        with interruptible(), warnings.catch_warnings(record=True) as said:
+            warnings.simplefilter("always")
             for place in outwards:
                 sim.integrate(float(times[place]))
                 velocity[place] = sim.particles[0].vz / M_S_AU_D
+        if said:
+            return np.full(times.shape, np.nan)
     return velocity
 
 

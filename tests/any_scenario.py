@@ -30,9 +30,11 @@ def digits(value: float) -> str:
 
 
 @st.composite
-def spread(draw: st.DrawFn, value: float, unit: str, share: float = 0.05, positive: bool = True) -> str:
-    """A quantity about a value, in any of the forms."""
-    error = abs(value) * share * draw(st.sampled_from([0.01, 0.3, 1.0, 4.0])) or 0.01
+def spread(
+    draw: st.DrawFn, value: float, unit: str, share: float = 0.05, positive: bool = True, most: float = math.inf
+) -> str:
+    """A quantity about a value, in any of the forms, its error counted from the value, but not from above ``most``."""
+    error = min(abs(value), most) * share * draw(st.sampled_from([0.01, 0.3, 1.0, 4.0])) or 0.01
     forms = [
         "{v} {u}",
         "{v} {u}",
@@ -55,7 +57,7 @@ def angle(draw: st.DrawFn, share: float = 0.05) -> str:
         return "uniform(0, 360) deg"
     degrees = draw(st.integers(-90, 400))
     unit, value = draw(st.sampled_from([("deg", float(degrees)), ("rad", math.radians(degrees))]))
-    return draw(spread(value, unit, share, positive=False))
+    return draw(spread(value, unit, share, positive=False, most=1.0))
 
 
 @st.composite

@@ -1,16 +1,15 @@
 """Screen a scenario with the real engine as a process of its own that a test can kill.
 
-Commits and checkpoints come fast, draws are stored a few at a time, and the moment at which the engine goes on with
-IAS15 is a kill point as well. None of this changes a result.
+Commits and checkpoints come fast, draws are stored a few at a time, and the moments at which the engine goes on with
+another method, IAS15 or a map again, are kill points as well. None of this changes a result.
 """
 
 import dataclasses
 import functools
-import os
 import sys
-from pathlib import Path
 
-from stabcheck.batch.progress import Status
+from toy_owner import say_at_work
+
 from stabcheck.store.killpoints import here
 
 COMMIT_EVERY_S = 0.1
@@ -21,32 +20,24 @@ CHUNK = 8
 def quickened() -> None:
     """Have the owner store early and often."""
     from stabcheck import screen as screening
-    from stabcheck.batch import carry
 
     plan_of = screening.plan_of
-    carry.SHOW_EVERY_S = 0.0
     screening.CHUNK = CHUNK
     screening.plan_of = lambda scenario: dataclasses.replace(plan_of(scenario), checkpoint_every_s=CHECKPOINT_EVERY_S)
     screening.carry_out = functools.partial(screening.carry_out, commit_every_s=COMMIT_EVERY_S)
 
 
 def watched() -> None:
-    """Have the process that follows draws die, if it is to, when a draw has been handed over."""
-    from stabcheck.engines.rebound import follow
+    """Have the process that follows draws die, if it is to, when a draw changes its method."""
+    from stabcheck.engines.rebound import changes
 
-    hand_over = follow._hand_over
+    go_on = changes._go_on
 
-    def handed_over(*arguments: object) -> None:
-        hand_over(*arguments)
+    def gone_on(*arguments: object) -> None:
+        go_on(*arguments)
         here("hand-over")
 
-    follow._hand_over = handed_over
-
-
-def say_at_work(status: Status) -> None:
-    """Make the file that ``AT_WORK`` names as soon as a process follows draws: starting takes seconds."""
-    if status.working and (name := os.environ.pop("AT_WORK", "")):
-        Path(name).touch()
+    changes._go_on = gone_on
 
 
 def main(path: str, scenario: str, draws: str, workers: str) -> None:

@@ -1,6 +1,7 @@
 """Carry out a run of the toy engine as a process of its own that a test can kill, or as a function."""
 
 import argparse
+import os
 import sys
 from collections.abc import Iterator, Sequence
 from pathlib import Path
@@ -11,7 +12,7 @@ from stabcheck.batch.carry import carry_out
 from stabcheck.batch.in_place import InPlace
 from stabcheck.batch.interrupt import StopRequest
 from stabcheck.batch.local import LocalWorkers
-from stabcheck.batch.progress import ProgressLine
+from stabcheck.batch.progress import Progress, ProgressLine, Status
 from stabcheck.plan import Plan, Task
 from stabcheck.store import DrawColumn, RunFile
 
@@ -44,7 +45,7 @@ def carry(
     *,
     stop: StopRequest | None = None,
     hang_after_s: float | None = None,
-    progress: ProgressLine | None = None,
+    progress: Progress | None = None,
 ) -> str:
     """Run until ``draws`` in total; gives the dump of the outcomes."""
     stop = stop or StopRequest()
@@ -59,6 +60,12 @@ def carry(
         return run.dump()
 
 
+def say_at_work(status: Status) -> None:
+    """Make the file that ``AT_WORK`` names as soon as a process follows draws: starting takes its time."""
+    if status.working and (name := os.environ.pop("AT_WORK", "")):
+        Path(name).touch()
+
+
 def main() -> int:
     parser = argparse.ArgumentParser()
     parser.add_argument("path", type=Path)
@@ -66,7 +73,13 @@ def main() -> int:
     parser.add_argument("workers", type=int)
     asked = parser.parse_args()
     with StopRequest().listening() as stop:
-        carry(asked.path, asked.draws, asked.workers, stop=stop, progress=ProgressLine(plain_every_s=0.1))
+        line = ProgressLine(plain_every_s=0.1)
+
+        def show(status: Status) -> None:
+            say_at_work(status)
+            line(status)
+
+        carry(asked.path, asked.draws, asked.workers, stop=stop, progress=show)
     return 130 if stop.by else 0
 
 

@@ -30,6 +30,8 @@ class Worker:
         It waits for tasks and has none in flight.
     ready : bool
         It has imported and compiled everything.
+    failure : str
+        The last line of the exception that ended its engine, if one did.
     """
 
     def __init__(self, name: str, engines: Sequence[str], plan: Plan) -> None:
@@ -48,6 +50,7 @@ class Worker:
         self.alone = self.wanting = self.ready = False
         self.heard_at = self.ready_at = time.monotonic()
         self.finished = 0
+        self.failure = ""
 
     def give(self, tasks: Sequence[Task], alone: bool = False) -> None:
         """Send tasks."""

@@ -215,6 +215,7 @@ class _Supervisor:
                 if wants_more:
                     self._answer(worker)
             case ("failed", str() as text):
+                worker.failure = text.strip().rpartition("\n")[2]
                 self._log("engine failed", f"{worker.name}: {text}")
             case _:
                 raise WorkerError(f"{worker.name} sent what nobody understands: {message!r}")
@@ -225,7 +226,7 @@ class _Supervisor:
         """Deal with a worker that has died; whatever it had sent completely counts."""
         worker.process.kill()  # in case only its pipe is closed
         worker.process.join()
-        text = worker.stderr_text()
+        text = worker.failure or worker.stderr_text()
         begun, unbegun = worker.in_flight_and_not()
         how = f"{worker.name} (process {worker.process.pid}) ended with {worker.process.exitcode}"
         self._log("worker died", f"{how}; draws in flight: {[t.number for t in begun]}; its last words: {text or '-'}")

@@ -42,7 +42,7 @@ class Preview:
     departure_m_s : float
         Largest departure of the N-body velocity curve from the Keplerian sum; NaN if not asked for.
     cost : CostFacts or None
-        None if the central values are not an orbit.
+        None if the central values are not an orbit, or cannot be integrated by the method.
     cautions : tuple of str
     """
 
@@ -132,6 +132,7 @@ def understood(scenario: Path | Scenario, *, draws: int = 1000) -> Preview:
     built = None if row.refused[0] else states(row)
     frame = other_reading(row) if built and row.frame != Frame.CARTESIAN and len(row.bodies) > 1 else ()
     departure = _departure(asked, row, built)
+    cost = _cost(asked, row, built, span, draws) if built and math.isfinite(span.years) else None
     warned = (
         *cautions.not_an_orbit(row),
         *cautions.about_the_draws(asked, row, phase_error_deg(opened)),
@@ -139,6 +140,7 @@ def understood(scenario: Path | Scenario, *, draws: int = 1000) -> Preview:
         *cautions.about_the_physics(asked, rates, modes),
         *cautions.about_the_fit(asked, departure),
         *cautions.about_the_span(span),
+        *cautions.about_the_cost(asked, bool(built) and cost is None and math.isfinite(span.years)),
     )
     return Preview(
         title=asked.title,
@@ -160,7 +162,7 @@ def understood(scenario: Path | Scenario, *, draws: int = 1000) -> Preview:
         other_frame=frame,
         span=span,
         departure_m_s=departure,
-        cost=_cost(asked, row, built, span, draws) if built and math.isfinite(span.years) else None,
+        cost=cost,
         cautions=warned,
     )
 
@@ -187,7 +189,7 @@ def _departure(asked: Scenario, row: Ensemble, built: States | None) -> float:
     return departure_m_s(row, 0, data_span_d, built).largest_m_s
 
 
-def _cost(asked: Scenario, row: Ensemble, built: States, span: SpanFacts, draws: int) -> CostFacts:
+def _cost(asked: Scenario, row: Ensemble, built: States, span: SpanFacts, draws: int) -> CostFacts | None:
     return cost_of(
         built,
         elements_in(Frame.JACOBI, built),

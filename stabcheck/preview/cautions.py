@@ -101,7 +101,12 @@ def about_the_fit(scenario: Scenario, departure_m_s: float) -> Iterator[str]:
     """What a Keplerian fit means for an N-body start."""
     if scenario.elements.fit is not FitKind.KEPLERIAN or len(scenario.bodies) < 2:
         return
-    if math.isnan(departure_m_s):
+    if math.isnan(departure_m_s) and scenario.elements.data_span is not None:
+        yield (
+            "the fit is a Keplerian sum, taken as osculating at the epoch; by how much the N-body curve departs cannot "
+            "be said: the central values are no orbit, or meet within the data"
+        )
+    elif math.isnan(departure_m_s):
         yield (
             "the fit is a Keplerian sum, taken as osculating at the epoch; give data_span to see by how much the "
             "N-body curve departs"
@@ -110,6 +115,15 @@ def about_the_fit(scenario: Scenario, departure_m_s: float) -> Iterator[str]:
         yield (
             f"the N-body velocity curve departs from the Keplerian sum by up to {departure_m_s:.2g} m/s within the "
             "data: if that is above the noise, these draws no longer fit"
+        )
+
+
+def about_the_cost(scenario: Scenario, failed: bool) -> Iterator[str]:
+    """The method gives up on the central values at once."""
+    if failed:
+        yield (
+            f"method {scenario.integration.method} fails on the central values in its first steps, so the cost is not "
+            "known: do two bodies stand at one place?"
         )
 
 

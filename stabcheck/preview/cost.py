@@ -28,7 +28,7 @@ BYTES_FIXED, BYTES_BODY, BYTES_PARAMETER = 120, 240, 9
 
 def cost_of(
     built: States, jacobi: Elements, period_d: Array, span_d: float, plan: Plan, *, draws: int, parameters: int
-) -> CostFacts:
+) -> CostFacts | None:
     """Estimate what following the first row costs, and ``draws`` times that.
 
     Parameters
@@ -45,13 +45,17 @@ def cost_of(
 
     Returns
     -------
-    CostFacts
-        As if every draw were followed to its span; draws that break early cost less, close encounters more.
+    CostFacts or None
+        As if every draw were followed to its span; draws that break early cost less, close encounters more. None if the
+        method fails on the first row within its first steps.
     """
     choice = choose(built.mass_msun[0], jacobi.semi_major_axis_au[0], jacobi.eccentricity[0], plan)
     fixed = choice.method is not Method.IAS15
     step_d = float(np.min(effective_period_d(period_d, jacobi.eccentricity[0]))) / plan.steps_per_periastron
-    day_s, steps_a_day = pace(built, choice, step_d if fixed else math.nan, indicator=plan.indicator)
+    try:
+        day_s, steps_a_day = pace(built, choice, step_d if fixed else math.nan, indicator=plan.indicator)
+    except RuntimeError:  # what REBOUND's errors are
+        return None
     cores = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
     one_draw_s = OVERHEAD * day_s * span_d + EACH_DRAW_S
     return CostFacts(
@@ -84,6 +88,11 @@ def pace(built: States, choice: Choice, step_d: float, *, indicator: bool) -> tu
     -------
     seconds, steps
         Process time and steps, both for one day of the system.
+
+    Raises
+    ------
+    RuntimeError
+        If REBOUND gives the integration up.
     """
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # of a throw-away measurement; the run itself keeps every warning

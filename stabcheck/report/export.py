@@ -1,5 +1,6 @@
 """One row a draw, for the next tool: CSV with a ``name [unit]`` header, or ECSV with units as such."""
 
+import contextlib
 import csv
 import io
 import math
@@ -149,8 +150,13 @@ def _ecsv_text(fields: Sequence[Field], about: dict[str, Any]) -> str:
 def _placed(path: Path, text: str) -> None:
     """Write beside the place and move there, so that a file is whole or not there."""
     beside = path.with_name(path.name + ".new")
-    beside.write_text(text, encoding="utf-8", newline="\n")
-    os.replace(beside, path)
+    try:
+        beside.write_text(text, encoding="utf-8", newline="\n")
+        os.replace(beside, path)
+    except OSError as problem:
+        with contextlib.suppress(OSError):
+            beside.unlink()
+        raise OSError(problem.errno, problem.strerror, str(path)) from problem
 
 
 def _cell(value: Any) -> str:

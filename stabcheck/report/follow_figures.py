@@ -10,7 +10,7 @@ import numpy as np
 from stabcheck.arrays import Array
 from stabcheck.constants import DEGREE_RAD, YEAR_D
 from stabcheck.report.figures import new_figure, saved, styled
-from stabcheck.report.style import COLUMN_MM, PAGE_MM, PLANET_LOOKS
+from stabcheck.report.style import COLUMN_MM, PAGE_MM, PLANET_LOOKS, TALLEST_MM
 from stabcheck.resonance import sector_of
 from stabcheck.series import Encounter, PairSeries, Series
 
@@ -21,7 +21,9 @@ if TYPE_CHECKING:
 UNITS = (("d", 1.0), ("yr", YEAR_D), ("kyr", 1e3 * YEAR_D), ("Myr", 1e6 * YEAR_D), ("Gyr", 1e9 * YEAR_D))
 LOGARITHMIC_FROM = 4.0
 """Ratio of largest to smallest distance from which the axis is logarithmic."""
-PANELS_ACROSS, PANEL_HEIGHT_MM = 4, 32.0
+Panel = tuple[str, Array]
+"""Title and angle."""
+PANELS_ACROSS, PANEL_HEIGHT_MM = 3, 34.0
 
 
 def write_follow_figures(series: Series, encounter: Encounter | None, folder: Path) -> list[Path]:
@@ -41,8 +43,8 @@ def write_follow_figures(series: Series, encounter: Encounter | None, folder: Pa
         Files written.
     """
     named = [("orbits", orbits(series))]
-    if series.pairs:
-        named.append(("angles", angles(series)))
+    pages = angles(series)
+    named += [(f"angles_{page}" if len(pages) > 1 else "angles", one) for page, one in enumerate(pages, 1)]
     if encounter is not None:
         named.append(("encounter", encounter_figure(encounter, series.bodies)))
     return [path for name, figure in named for path in saved(figure, folder / name)]
@@ -93,30 +95,33 @@ def _distance_axis(axes: "Axes", nearest: Array, furthest: Array) -> None:
 
 
 @styled
-def angles(series: Series) -> "Figure":
-    """Apsidal difference and resonant angles of each pair of neighbours, a row a pair, as points."""
-    rows = [_panels_of(pair, series.bodies) for pair in series.pairs]
-    down = [(panels, start) for panels in rows for start in range(0, len(panels), PANELS_ACROSS)]
-    across = min(PANELS_ACROSS, max(len(panels) for panels in rows))
-    width = COLUMN_MM if across == 1 else PAGE_MM * across / PANELS_ACROSS
-    figure = new_figure(max(width, COLUMN_MM), 10.0 + PANEL_HEIGHT_MM * len(down))
-    grid = figure.subplots(len(down), across, squeeze=False, sharex=True)
-    unit, unit_d = time_unit(float(series.time_d[-1]))
-    for place, (panels, start) in enumerate(down):
-        chosen = panels[start : start + across]
-        for axes, (title, values) in zip(grid[place], chosen, strict=False):
-            _angle_panel(axes, series.time_d / unit_d, values, title)
-            # the lowest of its column, also above an empty place
-            below = down[place + 1] if place + 1 < len(down) else ((), 0)
-            if len(below[0][below[1] :]) <= list(grid[place]).index(axes):
+def angles(series: Series) -> "list[Figure]":
+    """Apsidal difference and resonant angles of each pair of neighbours as points; pages as tall as a journal's."""
+    panels = [_panels_of(pair, series.bodies) for pair in series.pairs]
+    rows = [one[start : start + PANELS_ACROSS] for one in panels for start in range(0, len(one), PANELS_ACROSS)]
+    per_page = int((TALLEST_MM - 10.0) // PANEL_HEIGHT_MM)
+    return [_angle_page(series.time_d, rows[first : first + per_page]) for first in range(0, len(rows), per_page)]
+
+
+def _angle_page(time_d: Array, rows: Sequence[Sequence[Panel]]) -> "Figure":
+    across = max(len(row) for row in rows)
+    figure = new_figure(max(COLUMN_MM, PAGE_MM * across / PANELS_ACROSS), 10.0 + PANEL_HEIGHT_MM * len(rows))
+    grid = figure.subplots(len(rows), across, squeeze=False, sharex=True)
+    unit, unit_d = time_unit(float(time_d[-1]))
+    for place, row in enumerate(rows):
+        below = len(rows[place + 1]) if place + 1 < len(rows) else 0
+        for column, axes in enumerate(grid[place]):
+            if column >= len(row):
+                axes.set_visible(False)
+                continue
+            _angle_panel(axes, time_d / unit_d, row[column][1], row[column][0])
+            if column >= below:  # nothing stands under it
                 axes.set_xlabel(f"time [{unit}]")
                 axes.tick_params(labelbottom=True)
-        for axes in grid[place][len(chosen) :]:
-            axes.set_visible(False)
     return figure
 
 
-def _panels_of(pair: PairSeries, bodies: Sequence[str]) -> list[tuple[str, Array]]:
+def _panels_of(pair: PairSeries, bodies: Sequence[str]) -> list[Panel]:
     inner, outer = (_upright(bodies[place]) for place in (pair.inner, pair.outer))
     symbols = [rf"$\lambda_{{{inner}}}$", rf"$\lambda_{{{outer}}}$", rf"$\varpi_{{{inner}}}$", rf"$\varpi_{{{outer}}}$"]
     panels = [(f"{symbols[3]} − {symbols[2]}", pair.apsidal_difference_rad)]

@@ -146,7 +146,7 @@ def _departure_m_s(scenario: dict[str, Any], ensemble: Ensemble) -> float:
     from stabcheck.velocity import departure_m_s
 
     few = _rows(ensemble, orbits)
-    return max(departure_m_s(few, row, data_span_d).largest_m_s for row in range(orbits.size))
+    return float(np.max([departure_m_s(few, row, data_span_d).largest_m_s for row in range(orbits.size)]))
 
 
 def _rows(ensemble: Ensemble, rows: Integers) -> Ensemble:

@@ -10,6 +10,7 @@ from stabcheck.report.export import write_csv
 from stabcheck.report.figures import write_figures
 from stabcheck.report.from_run_file import run_table
 from stabcheck.report.methods import bibtex, methods_text
+from stabcheck.report.table_of_draws import RunTable
 from stabcheck.report.tables import as_text
 from stabcheck.store import RunFile
 
@@ -42,6 +43,13 @@ def report(run: Path, *, out: Path | None = None, plane: tuple[str, str] | None 
     Returns
     -------
     Report
+
+    Raises
+    ------
+    StabcheckError
+        If the run file cannot be read, or a column of the plane is not there.
+    OSError
+        If the folder cannot be written; it names the file or the folder.
     """
     with RunFile.open(run) as opened:
         table, scenario_text = run_table(opened), opened.scenario_text
@@ -49,6 +57,16 @@ def report(run: Path, *, out: Path | None = None, plane: tuple[str, str] | None 
     table = replace(table, facts=replace(table.facts, versions=versions))
     folder = out if out is not None else Path(f"{run.stem}_report")
     answer = answer_of(table)
+    try:
+        files = _written(table, answer, scenario_text, folder, plane)
+    except OSError as problem:  # a full disk does not say which file it was
+        raise OSError(problem.errno, problem.strerror, str(problem.filename or folder)) from problem
+    return Report(answer=answer, folder=folder, files=files)
+
+
+def _written(
+    table: RunTable, answer: Answer, scenario_text: str, folder: Path, plane: tuple[str, str] | None
+) -> tuple[Path, ...]:
     figures = write_figures(table, folder, plane=plane)
     texts = {
         "answer.txt": as_text(answer),
@@ -60,5 +78,4 @@ def report(run: Path, *, out: Path | None = None, plane: tuple[str, str] | None 
     for name, text in texts.items():
         (folder / name).write_text(text, encoding="utf-8")
     write_csv(table, folder / "draws.csv")
-    files = (*figures, *(folder / name for name in (*texts, "draws.csv")))
-    return Report(answer=answer, folder=folder, files=files)
+    return (*figures, *(folder / name for name in (*texts, "draws.csv")))

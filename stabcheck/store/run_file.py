@@ -261,20 +261,49 @@ DRAW_FIELDS = ("number", "state", "numbers", "refused", "weight", "source_row", 
 plain = schema.plain_words
 
 
+LEFT_BY_A_KILL = ("SQLITE_READONLY_ROLLBACK", "SQLITE_READONLY_RECOVERY")
+"""Whoever only reads must not play a journal back that was left by a process killed at the wrong moment."""
+
+
 def _connected(path: Path, *, writing: bool) -> sqlite3.Connection:
     with plain(path):
-        mode = "rw" if writing else "ro"
-        sql = sqlite3.connect(f"{path.absolute().as_uri()}?mode={mode}", uri=True, isolation_level=None, timeout=30.0)
+        if writing:
+            return _to_write(path)
         try:
-            schema.refuse_foreign(sql, path)
-            if writing:
-                sql.execute("PRAGMA journal_mode = WAL")
-                sql.execute("PRAGMA synchronous = FULL")
-                sql.execute("PRAGMA foreign_keys = ON")
-        except BaseException:
-            sql.close()
+            return _opened(path, "mode=ro")
+        except sqlite3.OperationalError as problem:
+            if problem.sqlite_errorname in LEFT_BY_A_KILL and schema.is_marked(path):
+                _opened(path, "mode=rw").close()  # plays it back
+                return _opened(path, "mode=ro")
+            if problem.sqlite_errorname == "SQLITE_READONLY_DIRECTORY" and not _has_company(path):
+                return _opened(path, "mode=ro&immutable=1")  # the whole of it is in the one file, which stays as it is
             raise
+
+
+def _to_write(path: Path) -> sqlite3.Connection:
+    sql = _opened(path, "mode=rw")
+    try:
+        sql.execute("PRAGMA journal_mode = WAL")
+        sql.execute("PRAGMA synchronous = FULL")
+        sql.execute("PRAGMA foreign_keys = ON")
+    except BaseException:
+        sql.close()
+        raise
     return sql
+
+
+def _opened(path: Path, how: str) -> sqlite3.Connection:
+    sql = sqlite3.connect(f"{path.absolute().as_uri()}?{how}", uri=True, isolation_level=None, timeout=30.0)
+    try:
+        schema.refuse_foreign(sql, path)
+    except BaseException:
+        sql.close()
+        raise
+    return sql
+
+
+def _has_company(path: Path) -> bool:
+    return any(path.with_name(path.name + ending).exists() for ending in ("-wal", "-journal"))
 
 
 def _build(path: Path, about: Mapping[str, str], columns: Sequence[DrawColumn]) -> None:

@@ -70,6 +70,17 @@ def make_tables(sql: sqlite3.Connection) -> None:
         sql.execute(table)
 
 
+def is_marked(path: Path) -> bool:
+    """Look into the header of a file, which is there whatever state SQLite left the rest in: is it a run file?
+
+    References
+    ----------
+    SQLite, Database File Format, section 1.3: the application id is the big-endian integer at offset 68.
+    """
+    with path.open("rb") as file:
+        return file.read(72)[68:] == APPLICATION_ID.to_bytes(4, "big")
+
+
 def refuse_foreign(sql: sqlite3.Connection, path: Path) -> None:
     """Refuse a database that is not a run file, or one of another version.
 

@@ -1,9 +1,9 @@
 """What looking at every step costs. Run: python per_step_record.py (three minutes)
 
-Reference: one ``integrate`` of plain REBOUND over the same system with the same step and number of steps, WHFast, safe
-mode 1 (``exact_finish_time=0``). Ours: everything that following a draw takes, from its start state to its outcome. Once
-without a tangent vector, and once with MEGNO, against plain REBOUND with its own MEGNO and with its variational equations
-alone. Process times of one process. Aim: at most 12 % more.
+Reference: one ``integrate`` of plain REBOUND over the same system with the same step and number of steps, WHFast,
+safe mode 1 (``exact_finish_time=0``). Ours: everything that following a draw takes, from its start state to its
+outcome. Once without a tangent vector, and once with MEGNO, against plain REBOUND with its own MEGNO and with its
+variational equations alone. Process times of one process. Aim: at most 12 % more.
 """
 
 import sys

@@ -25,7 +25,9 @@ from pathlib import Path
 from typing import Any
 
 TESTS = Path(__file__).resolve().parent.parent
-OWNER_POINTS = ("draws added", "before commit", "in commit", "after commit", "checkpoint stored", "run file created")
+FIRST_POINTS = ("run file created", "draws added")
+"""Where an owner comes in the first session of a run, before anything else."""
+OWNER_POINTS = ("draws added", "before commit", "in commit", "after commit", "checkpoint stored")
 WORKER_POINTS = ("half-sent message", "worker start", "hand-over")
 ONCE = ("run file created", "worker start")
 """A process comes here once."""
@@ -47,8 +49,6 @@ class Subject:
     environment : dict
     longest_s : float
         Longest useful wait before a kill.
-    says_at_work : bool
-        It makes the file that ``AT_WORK`` names when draws are followed; the wait may then begin there.
     table : callable
         What of a finished run file is compared, as bytes.
     """
@@ -57,7 +57,6 @@ class Subject:
     command: Callable[[Path, int], list[str]]
     environment: dict[str, str]
     longest_s: float
-    says_at_work: bool
     table: Callable[[Path], bytes]
 
 
@@ -68,7 +67,6 @@ def toy(draws: int) -> Subject:
         lambda path, workers: [sys.executable, script, str(path), str(draws), str(workers)],
         {"TOY_PAUSE_S": "0.1", "TOY_HAND_OVER": ",".join(map(str, range(1, draws, 7)))},
         1.5,
-        False,
         dumped,
     )
 
@@ -80,7 +78,6 @@ def scenario(file: Path, draws: int, longest_s: float) -> Subject:
         lambda path, workers: [sys.executable, script, str(path), name, str(draws), str(workers)],
         {},
         longest_s,
-        True,
         exported,
     )
 
@@ -128,12 +125,13 @@ def planned(subject: Subject, path: Path, chance: random.Random) -> dict[str, An
     way = chance.choice(["owner", "owner point", "worker", "worker point"])
     workers = chance.choice(WORKERS if way.startswith("owner") else WORKERS[1:])
     plan: dict[str, Any] = {"workers": workers, "way": way}
+    plan["after"] = "start" if chance.random() < 0.2 else "work begun"
     plan["after_s"] = round(chance.uniform(0.0, subject.longest_s), 3)
-    plan["after"] = "work begun" if subject.says_at_work and chance.random() < 0.8 else "start"
     if way.endswith("point"):
-        points = [p for p in OWNER_POINTS if p != "run file created" or not path.exists()]
-        plan["point"] = chance.choice(points if way == "owner point" else WORKER_POINTS)
+        points = WORKER_POINTS if way == "worker point" else OWNER_POINTS if path.exists() else FIRST_POINTS
+        plan["point"] = chance.choice(points)
         plan["count"] = 1 if plan["point"] in ONCE else chance.randint(1, 6)
+        plan["after_s"] = round(plan["after_s"] + subject.longest_s, 3)  # so that it is likely to get there before
     return plan
 
 
@@ -146,7 +144,7 @@ def session(subject: Subject, path: Path, chance: random.Random, folder: Path) -
     token, at_work = folder / "token", folder / "at work"
     for file in (token, at_work):
         file.unlink(missing_ok=True)
-    environment = {"AT_WORK": str(at_work)}
+    environment = {"AT_WORK": str(at_work)}  # the owner makes this file when draws are followed
     if "point" in note:
         environment["STABCHECK_KILL_AT"] = f"{note['point']}:{note['count']}:{token}"
     process = started(subject, path, note["workers"], **environment)

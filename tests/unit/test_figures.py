@@ -125,7 +125,8 @@ def test_control_a_label_that_is_too_long_is_noticed(made):
     figure = verdict_plane(*made)
     figure.axes[0].set_ylabel("a label that is far too long for a figure of one column " * 3)
     figure.draw_without_rendering()
-    assert figure.get_tightbbox().y1 > figure.get_size_inches()[1] + 0.01
+    drawn, height = figure.get_tightbbox(), figure.get_size_inches()[1]
+    assert drawn.y1 > height + 0.01 or drawn.y0 < -0.01  # which end sticks out depends on the version of matplotlib
 
 
 def test_verdicts_can_be_told_apart_in_a_grey_copy():

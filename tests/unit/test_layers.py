@@ -11,8 +11,8 @@ import pytest
 
 LINE = """
 constants errors arrays random distribution quantity kepler masses orbit radius scenario_tables scenario_keys
-scenario_checks scenario posterior resolved physical ensemble criteria span build velocity resonance series plan planning
-outcome verdict method chaos engines store batch preview screen report follow shipped cli __main__
+scenario_checks scenario posterior resolved physical ensemble criteria span build velocity resonance series plan
+planning outcome verdict method chaos engines store batch preview screen report follow shipped cli __main__
 """.split()  # noqa: SIM905 (a line, not a list)
 
 # Loaded before the line is walked, so that importing forty modules one by one takes seconds, not minutes.

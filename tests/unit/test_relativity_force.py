@@ -1,4 +1,4 @@
-"""Relativity as the engine applies it: the rate of the formula, a tangent that is its derivative, and a MEGNO that holds."""
+"""Relativity as the engine applies it: the rate of its formula, a tangent that is its derivative, MEGNO."""
 
 import math
 

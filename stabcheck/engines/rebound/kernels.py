@@ -336,7 +336,7 @@ def _never_nearer(before: Any, now: Any, i: int, j: int, step: float) -> float:
     """Give the square of a distance that the cubic of `closest_within` does not fall below: cheap, and close to it.
 
     A cubic lies within the hull of its four control points r0, r0 + v0 h/3, r1 − v1 h/3, r1, so its projection on any
-    direction is at least the smallest of theirs. The direction is that of the middle of the step.
+    direction is at least the smallest of theirs. The direction is that of the two inner ones together.
     """
     n2 = n_r0 = n_p0 = n_p1 = n_r1 = 0.0
     for axis in range(3):
@@ -483,6 +483,26 @@ def _nearest_touch(now: Any, touch: Any, event: Any) -> int:
 
 
 @njit(error_model="numpy")
+def _any_out(now: Any, elements: Any, far2: float, unbound: bool) -> Any:
+    """Is there a body worth a look around: this far away, or (where that matters) on an open orbit?"""
+    for k in range(elements.shape[0]):
+        if now[k + 1, 0] ** 2 + now[k + 1, 1] ** 2 + now[k + 1, 2] ** 2 > far2:
+            return True
+        if unbound and not elements[k, 0] > 0.0:
+            return True
+    return False
+
+
+@njit(error_model="numpy")
+def _at_star(before: Any, now: Any, zones: Any, touch: Any, step: float) -> Any:
+    """Which of the bodies that can come near the star has touched it within the last step? 0 if none."""
+    for body in range(1, now.shape[0]):
+        if zones[0, body] > 0.0 and _touches_star(before, now, body, touch[0, body], step):
+            return body
+    return 0
+
+
+@njit(error_model="numpy")
 def _look_around(now: Any, mass: Any, elements: Any, limits: Any, event: Any) -> int:
     """Has a body gone too far, or left, or (under a map that hands over) opened its orbit?"""
     for body in range(1, mass.shape[0]):
@@ -565,7 +585,9 @@ def advance(
     _note_distances(state, mass, pair_scale, closest, radii, elements, t)
     pairs = np.zeros((bodies * bodies, 2), dtype=np.int64)
     count = _zones(mass, extremes, pair_scale, touch, limits, closest, adaptive, zones, pairs)
+    far2 = min(limits[STOP_DISTANCE2], limits[EJECTION2])
     since_measured = 0.0
+    star_near = np.any(zones[0] > 0.0)
     for _ in range(most_steps):
         step = limits[STEP_D]
         if adaptive:
@@ -600,12 +622,9 @@ def advance(
                     code = UNDER_WAY
         if halted:
             code = _nearest_touch(particles, touch, event)
-        for body in range(1, bodies):
-            if (
-                code == UNDER_WAY
-                and zones[0, body] > 0.0
-                and _touches_star(state, particles, body, touch[0, body], step)
-            ):
+        if star_near and code == UNDER_WAY:
+            body = _at_star(state, particles, zones, touch, step)
+            if body > 0:
                 event[0], event[1] = 0, body
                 code = HIT_STAR
         _copy(particles, state)
@@ -621,10 +640,11 @@ def advance(
             since_measured = 0.0
             jacobi_elements(particles, mass, radii, elements)
             moved = _look_at_planets(elements, extremes, departure, axis_limits, ordered, t)
-            if code == UNDER_WAY:
+            if code == UNDER_WAY and _any_out(particles, elements, far2, limits[GIVE_UP] > 0.0):
                 code = _look_around(particles, mass, elements, limits, event)
             if (moved or closest[RATIO2] < known) and not adaptive:
                 count = _zones(mass, extremes, pair_scale, touch, limits, closest, adaptive, zones, pairs)
+                star_near = np.any(zones[0] > 0.0)
         if code != UNDER_WAY:
             return code
         if sampled:

@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 import rebound
 
-from stabcheck.arrays import Array
+from stabcheck.arrays import Array, Flags
 from stabcheck.engines.rebound import kernels
 from stabcheck.engines.rebound.block import Stage, simulation_at
 from stabcheck.engines.rebound.changes import begun
@@ -62,6 +62,13 @@ class Path:
     time_d: Array
     state: Array
     exact: bool
+
+    def on_grid(self, grid_d: Array) -> Flags:
+        """Which states belong to a grid: the first at or after each of its times, and the last of all."""
+        due = np.searchsorted(grid_d, self.time_d, side="right")
+        chosen = np.concatenate([[True], np.diff(due) > 0])
+        chosen[-1] = True
+        return chosen
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
