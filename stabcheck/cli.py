@@ -40,6 +40,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         The exit code.
     """
     words = list(sys.argv[1:] if arguments is None else arguments)
+    fill_closed_descriptors()
     try:
         refuse_platform(sys.platform)
         return _carried_out(words or ["--help"])
@@ -80,6 +81,15 @@ def refuse_platform(platform: str) -> None:
             why="its workers and run files rely on POSIX signals, sessions and file locks",
             do="use Linux or macOS; inside the Windows Subsystem for Linux it is Linux",
         )
+
+
+def fill_closed_descriptors() -> None:
+    """Put nowhere in place of a standard stream that is closed, or the next file opened would be taken for it."""
+    for descriptor in (0, 1, 2):
+        try:
+            os.fstat(descriptor)
+        except OSError:
+            os.open(os.devnull, os.O_RDWR)  # the lowest that is free: this one
 
 
 def silence_stdout() -> None:

@@ -1,6 +1,7 @@
 """What all tests share. With STABCHECK_TEST_WHEEL set, a run that does not see an installed wheel stops at once."""
 
 import os
+import signal
 import subprocess
 import sys
 from collections.abc import Callable
@@ -16,6 +17,9 @@ PACKAGE = Path(stabcheck.__file__).parent
 def pytest_sessionstart(session: pytest.Session) -> None:
     if os.environ.get("STABCHECK_TEST_WHEEL") and "site-packages" not in PACKAGE.parts:
         raise pytest.UsageError(f"the wheel was to be tested, but stabcheck is {PACKAGE}")
+    if signal.getsignal(signal.SIGINT) is signal.SIG_IGN:
+        # A shell starts what is put into its background deaf to Ctrl-C, and every process below inherits that.
+        signal.signal(signal.SIGINT, signal.default_int_handler)
 
 
 @pytest.fixture(scope="session")

@@ -181,12 +181,12 @@ def described(status: Status, now_s: float) -> str:
 class _Terminal:
     """A stream that may vanish in the middle of the night: from then on nothing is written, and nothing fails."""
 
-    def __init__(self, stream: TextIO) -> None:
+    def __init__(self, stream: TextIO | None) -> None:
         self._stream = stream
-        self.gone = ""
+        self.gone = "" if stream is not None else "there is none"  # as Python says it where the descriptor is closed
 
     def write(self, text: str) -> int:
-        if not self.gone:
+        if self._stream is not None and not self.gone:
             try:
                 return self._stream.write(text)
             except (OSError, ValueError) as problem:  # ValueError: it was closed
@@ -194,7 +194,7 @@ class _Terminal:
         return len(text)
 
     def flush(self) -> None:
-        if not self.gone:
+        if self._stream is not None and not self.gone:
             try:
                 self._stream.flush()
             except (OSError, ValueError) as problem:
@@ -202,12 +202,14 @@ class _Terminal:
 
     def isatty(self) -> bool:
         try:
-            return not self.gone and self._stream.isatty()
+            return self._stream is not None and not self.gone and self._stream.isatty()
         except (OSError, ValueError) as problem:
             self.gone = str(problem)
             return False
 
     def fileno(self) -> int:
+        if self._stream is None:
+            raise OSError(self.gone)
         return self._stream.fileno()
 
 

@@ -5,6 +5,7 @@ import resource
 import shutil
 import signal
 import sqlite3
+import struct
 import subprocess
 import sys
 from pathlib import Path
@@ -258,6 +259,58 @@ def test_a_journal_cut_at_any_byte_leaves_a_prefix_of_the_commits(tmp_path):
         assert numbers == list(range(len(numbers)))
         seen.add(len(numbers))
     assert len(seen) > 5  # the cuts fell into many places
+
+
+def leave_a_journal(path: Path) -> None:
+    """Leave a run file as a kill at the switch to the write-ahead log does: page 1 new, its old content in a journal.
+
+    The rollback journal is written as SQLite's "Database File Format", section 2.1 "The Rollback Journal", says: a
+    header of one sector (magic, records, nonce, pages before, sector, page size), then page number, page, checksum.
+    """
+    before = path.read_bytes()
+    size, sector, nonce = int.from_bytes(before[16:18], "big"), 512, 12345
+    page = before[:size]
+    check = (nonce + sum(page[at] for at in range(size - 200, 0, -200))) % 2**32
+    magic = bytes.fromhex("d9d505f920a163d7")
+    header = magic + struct.pack(">5I", 1, nonce, len(before) // size, sector, size)
+    journal = header.ljust(sector, b"\0") + struct.pack(">I", 1) + page + struct.pack(">I", check)
+    path.with_name(path.name + "-journal").write_bytes(journal)
+    path.write_bytes(page[:18] + b"\2\2" + page[20:24] + b"half" + before[28:])
+
+
+@pytest.mark.parametrize("way", ["read", "resume"])
+def test_a_journal_that_a_kill_left_is_played_back_by_whoever_comes_next(tmp_path, way):
+    path = tmp_path / "x.run"
+    expected = carry(path, 5, 0)
+    leave_a_journal(path)
+    if way == "read":
+        with RunFile.open(path) as run:
+            assert run.dump() == expected
+    else:
+        assert carry(path, 20, 0) == carry(tmp_path / "whole.run", 20, 0)
+
+
+def test_control_a_reader_alone_does_not_play_it_back(tmp_path):
+    path = tmp_path / "x.run"
+    made(path).close()
+    leave_a_journal(path)
+    sql = sqlite3.connect(f"{path.as_uri()}?mode=ro", uri=True)
+    with pytest.raises(sqlite3.OperationalError) as refused:
+        sql.execute("PRAGMA application_id")
+    sql.close()
+    assert refused.value.sqlite_errorname == "SQLITE_READONLY_ROLLBACK"
+
+
+def test_the_journal_of_a_foreign_database_is_left_to_its_program(tmp_path):
+    path = tmp_path / "x.run"
+    with sqlite3.connect(path) as sql:
+        sql.execute("CREATE TABLE t (x)")
+    sql.close()
+    leave_a_journal(path)
+    damaged = path.read_bytes()
+    with pytest.raises(RunFileError):
+        RunFile.open(path)
+    assert path.read_bytes() == damaged
 
 
 def test_what_is_left_of_a_start_that_was_killed_does_not_matter(tmp_path):

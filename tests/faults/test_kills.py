@@ -13,6 +13,7 @@ import toy_engine
 from toy_owner import carry
 
 from stabcheck.errors import StabcheckError
+from stabcheck.report.export import export
 from stabcheck.store import RunFile
 from stabcheck.store.killpoints import NAMES
 
@@ -98,6 +99,11 @@ def finished(path: Path) -> int:
         return 0  # it is not there yet
 
 
+def log_of(path: Path) -> list[tuple[str, str, str]]:
+    with RunFile.open(path) as run:
+        return run.log_entries()
+
+
 def wait_until(true, within_s: float = 30.0) -> None:
     deadline = time.monotonic() + within_s
     while not true():
@@ -143,6 +149,45 @@ def test_a_run_killed_ten_times_at_random_loses_no_bit(tmp_path, measure, seed):
         process.kill()
         assert ended(process) in (0, -signal.SIGKILL)
     assert carry(path, DRAWS, 2) == measure
+
+
+REAL_DRAWS = 6
+REAL_KILLS = {
+    "one": [("in commit", 3, ""), ("checkpoint stored", 2, ""), ("half-sent message", 4, "worker")],
+    "other": [("hand-over", 2, "worker")],
+}
+"""Two runs and how they are killed, one session after the other; one whose worker is killed comes to its end."""
+
+
+def real_owner(path: Path, workers: int, kill_at: str = "") -> int:
+    """Screen with the real engine in a process of its own; its exit code."""
+    python_path = f"{TESTS}{os.pathsep}{TESTS.parent}"
+    environment = {**os.environ, "PYTHONPATH": python_path, **({"STABCHECK_KILL_AT": kill_at} if kill_at else {})}
+    words = [str(path), str(TESTS / "faults" / "handovers.toml"), str(REAL_DRAWS), str(workers)]
+    command = [sys.executable, str(TESTS / "real_owner.py"), *words]
+    return ended(subprocess.Popen(command, env=environment, stderr=subprocess.PIPE, start_new_session=True))
+
+
+def table(path: Path) -> str:
+    """Give what a user gets, and every digit of the outcomes."""
+    export(path, path.with_suffix(".csv"))
+    with RunFile.open(path) as run:
+        return path.with_suffix(".csv").read_text() + run.dump()
+
+
+def test_runs_of_the_real_engine_killed_in_its_stages_lose_no_bit(tmp_path):
+    assert real_owner(tmp_path / "whole.run", 0) == 0
+    expected = table(tmp_path / "whole.run")
+    assert "close pair" in expected  # the scenario is one with hand-overs
+    for name, kills in REAL_KILLS.items():
+        path = tmp_path / f"{name}.run"
+        for point, count, who in kills:
+            token = tmp_path / f"{name} killed at {point}"
+            code = real_owner(path, 1, f"{point}:{count}:{token}")
+            assert token.exists(), f"it did not come to {point!r}"
+            assert code == (0 if who == "worker" else -signal.SIGKILL)
+        assert sum(event == "worker died" for _, event, _ in log_of(path)) == 1
+        assert table(path) == expected
 
 
 @pytest.mark.skipif(not sys.platform.startswith("linux"), reason="finds the workers in /proc")

@@ -1,6 +1,7 @@
 """The answer as numbers and as text: whole, plain, and honest where there is little to say."""
 
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -204,3 +205,11 @@ def test_json_has_the_versions_the_seed_and_the_command(answer):
     found = answer.as_dict()
     assert found["facts"]["seed"] == 7 and found["facts"]["versions"]["rebound"] == "5.2.2"
     assert found["facts"]["command"].startswith("stabcheck screen") and found["preliminary"] is False
+
+
+def test_draws_in_exactly_one_plane_are_told_that_they_collide_more_often():
+    inclined = mixed()
+    flat_angles = {name: np.zeros_like(inclined.elements[name]) for name in ("inclination_rad", "node_rad")}
+    flat = replace(inclined, elements={**inclined.elements, **flat_angles})
+    told = [any("exactly one plane" in sentence for sentence in answer_of(one).cautions) for one in (flat, inclined)]
+    assert told == [True, False]

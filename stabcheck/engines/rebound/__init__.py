@@ -9,13 +9,20 @@ from stabcheck.plan import Plan, Task
 class ReboundEngine:
     """Follow draws one after the other; signs the contract of ``engines.base``.
 
-    The kernels are compiled when the first engine is made; after that they come from a cache.
+    The kernels are compiled at the first draw on a machine; after that they come from a cache.
     """
 
     def __init__(self) -> None:
         from stabcheck.engines.rebound.library import check_layout
 
         check_layout()
+
+    def prepare(self) -> None:
+        """Have the kernels compiled, or fetched from the cache, by following a planet for some orbits."""
+        from stabcheck.engines.rebound.setting import one_planet
+
+        for _ in self.follow([one_planet()], Plan(samples=16)):
+            pass
 
     def follow(self, tasks: Iterable[Task], plan: Plan) -> Iterator[Message]:
         """Follow tasks in the order they come, each to its end."""

@@ -78,6 +78,19 @@ class Setting:
         return float(np.min(_effective_periods_d(a_au, eccentricity, self.mass)))
 
 
+def one_planet() -> Task:
+    """Make the task to follow a Jupiter at 1 au for a year."""
+    speed = math.sqrt(GM_SUN_AU3_D2)
+    return Task(
+        number=0,
+        mass_msun=np.array([1.0, 1e-3]),
+        radius_au=np.zeros(2),
+        position_au=np.array([[-1e-3, 0.0, 0.0], [0.999, 0.0, 0.0]]),
+        velocity_au_d=np.array([[0.0, -1e-3 * speed, 0.0], [0.0, 0.999 * speed, 0.0]]),
+        span_d=365.25,
+    )
+
+
 def setting_of(task: Task, plan: Plan) -> Setting:
     """Work out the constants of a draw from its task."""
     state = np.concatenate([task.position_au, task.velocity_au_d], axis=1)
