@@ -25,6 +25,21 @@ class Written:
     sample_bytes: bytes = b""
 
 
+def as_toml(value: Any, top: bool = True) -> str:
+    """Write TOML: inline tables below the top level, so that every shape can be written."""
+    if isinstance(value, dict):
+        pairs = [f"{as_toml(key, False)} = {as_toml(inner, False)}" for key, inner in value.items()]
+        return "\n".join(pairs) if top else "{ " + ", ".join(pairs) + " }"
+    if isinstance(value, list):
+        return "[" + ", ".join(as_toml(inner, False) for inner in value) + "]"
+    if isinstance(value, bool):
+        return str(value).lower()
+    if isinstance(value, str):
+        plain = all(letter.isprintable() and letter not in '"\\' for letter in value)
+        return f'"{value}"' if plain else '"' + "".join(f"\\U{ord(letter):08x}" for letter in value) + '"'
+    return repr(value)
+
+
 def digits(value: float) -> str:
     return f"{value:.6g}"
 

@@ -68,6 +68,7 @@ class LocalWorkers:
             If the workers cannot be started or keep dying; what came out before is good.
         """
         processes.refuse_while_importing_main()
+        processes.refuse_main_without_file()
         hang_after_s = self._hang_after_s or max(600.0, 10.0 * plan.checkpoint_every_s)
         supervisor = _Supervisor(tasks, plan, self.count, self._engines, self._log, hang_after_s)
         try:

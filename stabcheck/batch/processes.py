@@ -3,6 +3,7 @@
 import contextlib
 import os
 import signal
+import sys
 from collections.abc import Callable, Iterator
 from typing import IO, Any, Protocol
 
@@ -82,6 +83,25 @@ def refuse_while_importing_main() -> None:
     """
     if getattr(process.current_process(), "_inheriting", False):
         raise missing_guard()
+
+
+def refuse_main_without_file() -> None:
+    """Refuse to start workers for a script that they could not read again.
+
+    Raises
+    ------
+    WorkerError
+        If the script came over standard input.
+    """
+    main = sys.modules["__main__"]
+    file = getattr(main, "__file__", None)  # a notebook or ``python -c`` has none, and nothing is read again
+    if getattr(main, "__spec__", None) is None and file is not None and not os.path.exists(file):
+        raise WorkerError(
+            "a script that is no file cannot start workers",
+            where=str(file),
+            why="each worker reads the script again",
+            do="save it as a file, or ask for workers=0, which works in this process",
+        )
 
 
 def missing_guard() -> WorkerError:

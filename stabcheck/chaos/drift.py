@@ -45,15 +45,18 @@ def frequency_rad(turns: Array) -> float:
 def _peak(windowed: Array, start: float, width: float) -> float:
     """Newton's method on the logarithmic derivative of the power, kept within one coarse bin of the start."""
     index = np.arange(windowed.size) - 0.5 * (windowed.size - 1)
+    once, twice = -1j * index, -(index**2)  # what a derivative brings down
     frequency = start
     for _ in range(8):
         turned = windowed * np.exp(-1j * frequency * index)
-        f, f1, f2 = np.sum(turned), np.sum(-1j * index * turned), np.sum(-(index**2) * turned)
+        f, f1, f2 = np.sum(turned), np.sum(once * turned), np.sum(twice * turned)
         slope = 2.0 * np.real(np.conj(f) * f1)
         bend = 2.0 * (np.abs(f1) ** 2 + np.real(np.conj(f) * f2))
         if not bend < 0.0:
             break
-        frequency = float(np.clip(frequency - slope / bend, start - width, start + width))
+        before, frequency = frequency, float(np.clip(frequency - slope / bend, start - width, start + width))
+        if frequency == before:
+            break
     return frequency
 
 

@@ -6,6 +6,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from any_scenario import as_toml
 from good_scenario import CARTESIAN, GOOD
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -105,21 +106,6 @@ def mutated(draw: st.DrawFn) -> dict[str, Any]:
             other = draw(st.sampled_from(sorted(table)))
             table[key] = table[other]
     return content
-
-
-def as_toml(value: Any, top: bool = True) -> str:
-    """Write TOML: inline tables below the top level, so that every shape can be written."""
-    if isinstance(value, dict):
-        pairs = [f"{as_toml(key, False)} = {as_toml(inner, False)}" for key, inner in value.items()]
-        return "\n".join(pairs) if top else "{ " + ", ".join(pairs) + " }"
-    if isinstance(value, list):
-        return "[" + ", ".join(as_toml(inner, False) for inner in value) + "]"
-    if isinstance(value, bool):
-        return str(value).lower()
-    if isinstance(value, str):
-        plain = all(letter.isprintable() and letter not in '"\\' for letter in value)
-        return f'"{value}"' if plain else '"' + "".join(f"\\U{ord(letter):08x}" for letter in value) + '"'
-    return repr(value)
 
 
 def outcome(text: str) -> str:

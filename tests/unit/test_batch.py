@@ -146,8 +146,8 @@ def test_what_hangs_is_not_finished_and_comes_right_on_resume(tmp_path, measure,
 
 
 def test_progress_messages_keep_the_watch_dog_quiet(monkeypatch):
-    monkeypatch.setenv("TOY_PAUSE_S", "1.5")
-    found = messages_of(LocalWorkers(1, engines=TOY, hang_after_s=0.8), [1])
+    monkeypatch.setenv("TOY_PAUSE_S", "5")
+    found = messages_of(LocalWorkers(1, engines=TOY, hang_after_s=2.5), [1])
     assert isinstance(found[-1], Finished)
     assert any(isinstance(message, Checkpoint) for message in found)
 

@@ -47,6 +47,8 @@ def modules_of(package: Path) -> dict[str, Path]:
     """Dotted name (with the package's own) -> file."""
     names = {}
     for file in sorted(package.rglob("*.py")):
+        if not (file.parent / "__init__.py").exists():
+            continue  # a script beside data, such as the one that made the samples of a scenario
         parts = (package.name, *file.relative_to(package).with_suffix("").parts)
         names[".".join(parts[:-1] if parts[-1] == "__init__" else parts)] = file
     return names

@@ -321,3 +321,15 @@ def test_the_run_file_grows_by_what_was_said_to_a_quarter(tmp_path: Path) -> Non
     cost = understood(scenario).cost
     assert cost is not None
     assert cost.bytes_per_draw == pytest.approx((sizes[1] - sizes[0]) / 400, rel=0.25)
+
+
+def test_central_values_that_the_method_gives_up_at_once_have_no_cost_and_it_is_said() -> None:
+    at_one_place = TWO_PLANETS.replace('frame = "jacobi"', 'frame = "astrocentric"')
+    tables = at_one_place.split("[planets.c]")
+    planet = tables[1][tables[1].index("\n") : tables[1].index("[", 1)]
+    same = f"{tables[0]}[planets.c]{planet}[planets.b]{planet}"
+    rest = '[draws]\nseed = 1\n[integration]\nmethod = "trace"\nspan = "10 inner orbits"\n'
+    seen = understood(Scenario.from_text(same + rest), draws=5)
+    assert seen.cost is None
+    assert any("method trace fails on the central values" in caution for caution in seen.cautions)
+    assert json.dumps(seen.as_dict(), allow_nan=False)

@@ -186,3 +186,10 @@ def test_ctrl_c_belongs_to_python_again_after_an_integration():
             signal.raise_signal(signal.SIGINT)
     finally:
         signal.signal(signal.SIGINT, before)
+
+
+def test_what_ias15_warns_of_is_no_velocity_and_nothing_is_printed():
+    built = states(system())
+    times = np.linspace(0.0, 400.0, 20)
+    assert np.isfinite(nbody_velocity_m_s(built, 0, times)).all()
+    assert np.isnan(nbody_velocity_m_s(built, 0, times, smallest_step_d=15.0)).all()  # steps too long to converge

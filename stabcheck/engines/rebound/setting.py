@@ -185,13 +185,19 @@ def _ordered(a_au: Array, mass: Array) -> Array:
     return np.asarray(a_au[1:] - a_au[:-1] > hill, dtype=np.float64)
 
 
+def _cross(a: Array, b: Array) -> Array:
+    """The vector product; NumPy's own takes 30 µs for two vectors."""
+    (ax, ay, az), (bx, by, bz) = a.tolist(), b.tolist()
+    return np.array([ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx])
+
+
 def _invariable_basis(state: Array, mass: Array) -> Array:
     momentum = np.zeros(3)
     for body in range(mass.size):
-        momentum += mass[body] * np.cross(state[body, :3], state[body, 3:])
+        momentum += mass[body] * _cross(state[body, :3], state[body, 3:])
     length = math.sqrt(float(momentum @ momentum))
     up = momentum / length if length > 0.0 else np.array([0.0, 0.0, 1.0])
     helper = np.eye(3)[int(np.argmin(np.abs(up)))]
-    first = np.cross(helper, up)
+    first = _cross(helper, up)
     first /= math.sqrt(float(first @ first))
-    return np.ascontiguousarray(np.stack([first, np.cross(up, first), up]))
+    return np.ascontiguousarray(np.stack([first, _cross(up, first), up]))
