@@ -95,7 +95,7 @@ class _Supervisor:
     ) -> None:
         self._source = iter(tasks)
         self._source_is_empty = False
-        self._again: deque[Task] = deque()
+        self._waiting: deque[Task] = deque()
         self._suspects: deque[Task] = deque()
         self._plan, self._count, self._engines, self._log = plan, count, engines, log
         self._hang_after_s = hang_after_s
@@ -109,33 +109,40 @@ class _Supervisor:
 
     # -- tasks
 
-    def _next_task(self) -> Task | None:
-        if self._again:
-            return self._again.popleft()
-        if not self._source_is_empty:
+    def _look_ahead(self, count: int) -> None:
+        """Have ``count`` tasks waiting, if there are so many."""
+        while not self._source_is_empty and len(self._waiting) < count:
             task = next(self._source, None)
-            if task is not None:
-                return task
-            self._source_is_empty = True
-        return None
+            if task is None:
+                self._source_is_empty = True
+            else:
+                self._waiting.append(task)
 
     def _taken(self, most: int) -> list[Task]:
-        return [task for _ in range(most) if (task := self._next_task()) is not None]
+        self._look_ahead(most)
+        return [self._waiting.popleft() for _ in range(min(most, len(self._waiting)))]
+
+    def _stock(self, worker: Worker) -> int:
+        """How many tasks a worker should have that it has not begun.
+
+        Ever fewer when the end is in sight, so that no worker has a stock while another one waits.
+        """
+        stock = min(MOST_PREFETCHED, int(PREFETCH_S * worker.rate_per_s()))
+        self._look_ahead(self._count * stock)
+        return min(stock, len(self._waiting) // (2 * self._count)) if self._source_is_empty else stock
 
     def more_to_do(self) -> bool:
         """Is any task left that has neither finished nor been given up?"""
         if any(worker.outstanding for worker in self._workers.values()) or self._suspects:
             return True
-        task = self._next_task()
-        if task is not None:
-            self._again.appendleft(task)
-        return task is not None
+        self._look_ahead(1)
+        return bool(self._waiting)
 
     def _supply(self, worker: Worker) -> None:
         """Give a worker what it needs, if there is anything it may have."""
         if not worker.ready or worker.alone:
             return
-        stock = min(MOST_PREFETCHED, int(PREFETCH_S * worker.rate_per_s()))
+        stock = self._stock(worker)
         if worker.wanting:
             tasks = self._taken(max(1, stock))
             if tasks:
@@ -151,7 +158,7 @@ class _Supervisor:
             worker.alone, worker.wanting = False, True
             return
         # An engine that follows several draws at once wants one more beside those in flight.
-        tasks = [] if worker.alone else self._taken(max(1, min(MOST_PREFETCHED, int(PREFETCH_S * worker.rate_per_s()))))
+        tasks = [] if worker.alone else self._taken(max(1, self._stock(worker)))
         if tasks:
             worker.give(tasks)
         else:
@@ -232,7 +239,7 @@ class _Supervisor:
         how = f"{worker.name} (process {worker.process.pid}) ended with {worker.process.exitcode}"
         self._log("worker died", f"{how}; draws in flight: {[t.number for t in begun]}; its last words: {text or '-'}")
         self._dismiss(worker)
-        self._again.extendleft(reversed(unbegun))
+        self._waiting.extendleft(reversed(unbegun))
         if not worker.ready:
             self._give_up_before_ready(text)
         elif worker.alone and begun:
@@ -280,7 +287,7 @@ class _Supervisor:
         begun, unbegun = worker.in_flight_and_not()
         silent = f"{worker.name} has sent nothing for {self._hang_after_s:g} s and was ended"
         self._dismiss(worker)
-        self._again.extendleft(reversed(unbegun))
+        self._waiting.extendleft(reversed(unbegun))
         if not worker.ready:
             self._log("worker stuck", silent)
             self._give_up_before_ready(silent)

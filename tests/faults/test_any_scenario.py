@@ -16,6 +16,7 @@ from hypothesis import HealthCheck, given, settings
 TESTS = Path(__file__).parent.parent
 
 
+@pytest.mark.slow
 def test_any_scenario_goes_the_whole_way_or_is_refused_in_words(tmp_path, monkeypatch):
     monkeypatch.setattr("stabcheck.preview.cost.MEASURED_S", 0.002)
     seen: Counter[str] = Counter()

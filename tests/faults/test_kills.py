@@ -175,6 +175,7 @@ def table(path: Path) -> str:
         return path.with_suffix(".csv").read_text() + run.dump()
 
 
+@pytest.mark.slow
 def test_runs_of_the_real_engine_killed_in_its_stages_lose_no_bit(tmp_path):
     assert real_owner(tmp_path / "whole.run", 0) == 0
     expected = table(tmp_path / "whole.run")

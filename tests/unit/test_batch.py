@@ -93,7 +93,8 @@ def test_tasks_are_taken_as_they_are_needed():
         finished += isinstance(message, Finished)
         if finished == 300:
             break
-    assert len(taken) <= finished + 2 * (64 + 64 + 64)  # a stock, a batch on its way, and results on their way back
+    # for each worker a stock, a batch on its way, results on their way back, and a stock that waits here
+    assert len(taken) <= finished + 2 * (64 + 64 + 64 + 64)
 
 
 def test_a_draw_that_kills_its_worker_twice_is_recorded_and_no_other_draw_suffers(tmp_path, measure, monkeypatch):

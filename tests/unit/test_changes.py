@@ -67,3 +67,14 @@ def test_a_draw_that_megno_has_called_chaotic_stops_carrying_its_tangent_at_a_ha
     monkeypatch.setattr(changes, "CHAOTIC_FROM", 0.1)  # then any draw has been called chaotic
     found = outcome_of(slow_neighbours(60.0), seed=1)
     assert found.handovers > 0 and 0.0 < found.megno_time_d < 0.9 * found.time_d
+
+
+def test_megno_loses_nothing_where_blocks_end_between_measurements(monkeypatch):
+    """Blocks of a length that no multiple of eight divides: time and growth of each last stretch must count."""
+    planets = [{"m": 3e-5, "a": 0.1, "e": 0.02, "M": 1.0}, {"m": 3e-5, "a": 0.13, "e": 0.02, "M": 4.0}]
+    task = task_of(1.0, planets, 40 * YEAR)
+    whole = outcome_of(task, samples=64)
+    monkeypatch.setattr(block, "MAP_STEPS", 101)
+    pieces = outcome_of(task, samples=64)
+    assert pieces.megno_time_d == pytest.approx(task.span_d, rel=1e-9)
+    assert pieces.megno == pytest.approx(whole.megno, abs=1e-3)  # the sums are cut elsewhere: step over time

@@ -588,7 +588,7 @@ def advance(
     far2 = min(limits[STOP_DISTANCE2], limits[EJECTION2])
     since_measured = 0.0
     star_near = np.any(zones[0] > 0.0)
-    for _ in range(most_steps):
+    for taken in range(most_steps):
         step = limits[STEP_D]
         if adaptive:
             kept = clock[NEXT_STEP]
@@ -607,7 +607,8 @@ def advance(
             clock[MAP_STEPS] += 1.0
             clock[INSIDE] += 1.0
             sampled = clock[INSIDE] == limits[STEPS_PER_INTERVAL]
-            measured = sampled or int(clock[INSIDE]) % MEASURE_EVERY == 0
+            # also at the last step: the next block takes the tangent's length anew
+            measured = sampled or int(clock[INSIDE]) % MEASURE_EVERY == 0 or taken == most_steps - 1
             t = clock[INTERVAL] * limits[INTERVAL_D] + clock[INSIDE] * step
         since_measured += step
         known = closest[RATIO2]
