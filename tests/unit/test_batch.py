@@ -314,11 +314,20 @@ def test_the_handlers_of_before_come_back_and_what_is_ignored_stays_ignored():
 @pytest.mark.parametrize("workers", [0, 2])
 def test_a_stop_in_order_keeps_what_is_in_flight(tmp_path, measure, monkeypatch, workers):
     monkeypatch.setenv("TOY_PAUSE_S", "0.5")
-    path, asked_at = tmp_path / "x.run", time.monotonic() + 1.5
+    path = tmp_path / "x.run"
 
     class Later(StopRequest):
+        """Asked for two seconds after the first draw is in the file, however long the workers took to begin."""
+
+        def __init__(self) -> None:
+            super().__init__()
+            self.first_seen = math.inf
+
         def __call__(self) -> bool:
-            return time.monotonic() > asked_at
+            if math.isinf(self.first_seen):
+                with RunFile.open(path) as live:
+                    self.first_seen = time.monotonic() if live.finished_count() else math.inf
+            return time.monotonic() > self.first_seen + 2.0
 
     carry(path, DRAWS, workers, stop=Later())
     with RunFile.open(path) as run:
