@@ -78,7 +78,7 @@ class Outcome:
     closest_hill: float = math.nan
     """Smallest distance of two planets in momentary mutual Hill radii."""
     closest_au: float = math.nan
-    """The distance of that approach."""
+    """The distance of that approach; another one can be smaller in au where the pair was nearer to the star."""
     closest_pair: tuple[int, int] = (0, 0)
     closest_time_d: float = math.nan
     departure_time_d: float = math.nan

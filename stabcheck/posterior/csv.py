@@ -40,7 +40,10 @@ def read(content: bytes, wanted: Sequence[str], where: str) -> Table:
         return _table(csv.reader(lines, strict=True, skipinitialspace=True), lines, wanted, where)
     except csv.Error as error:
         raise SampleFileError(
-            "the text is not comma-separated values", where=f"{where}, line {lines.number}", why=str(error)
+            "the text is not comma-separated values",
+            where=f"{where}, line {lines.number}",
+            why=str(error),
+            do="look for a quotation mark that is not closed, or a file that was cut off",
         ) from error
 
 

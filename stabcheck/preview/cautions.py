@@ -3,11 +3,14 @@
 import math
 from collections.abc import Iterator, Mapping, Sequence
 
+from stabcheck.constants import JUPITER_MSUN
 from stabcheck.criteria.hill import HILL_LIMIT
 from stabcheck.ensemble import Ensemble
 from stabcheck.preview.parts import FrameFacts, PairFacts, RateFacts, SpanFacts
 from stabcheck.scenario import FitKind, Scenario
 
+PLANET_MSUN = 0.08
+"""Lightest star that burns hydrogen (common practice, no source): more is hardly a planet, and often a wrong unit."""
 RELATIVITY_MATTERS = 0.1
 """Of the slowest secular rate; below this relativity changes a secular cycle by less than a tenth."""
 FEWEST_CYCLES = 3.0
@@ -47,6 +50,12 @@ def about_the_system(row: Ensemble, pairs: Sequence[PairFacts], frame: Sequence[
             yield (
                 f"{pair.inner}-{pair.outer}: {pair.separation_hill:.2f} mutual Hill radii, below 2√3, where circular "
                 "orbits may meet; only a resonance can protect them"
+            )
+    for name, mass in zip(row.bodies, row.mass_msun[0].tolist(), strict=True):
+        if name != "companion" and mass > PLANET_MSUN:
+            yield (
+                f"{name}: {mass / JUPITER_MSUN:.3g} Jupiter masses, heavier than any planet: look at the "
+                "unit of its mass or semi-amplitude"
             )
     points = [name for name, radius in zip(row.bodies, row.radius_au[0], strict=True) if not radius > 0.0]
     if points:

@@ -27,7 +27,6 @@ NUMBERS: tuple[tuple[str, str, float], ...] = (
     ("energy_error", "", 1.0),
     ("orbit_energy_error", "", 1.0),
     ("closest_hill", "", 1.0),
-    ("closest_au", "au", 1.0),
     ("closest_time", "yr", 1 / YEAR_D),
     ("departure_time", "yr", 1 / YEAR_D),
     ("fewest_steps_per_periastron", "", 1.0),
@@ -190,6 +189,8 @@ def _outcome_fields(table: RunTable) -> Iterator[Field]:
     for name, unit, factor in NUMBERS:
         internal = name if hasattr(out, name) else f"{name}_d"
         yield Field(name, unit, getattr(out, internal) * factor)
+    # In Hill radii the closest approach of an eccentric pair need not be the one that is closest in au.
+    yield Field("distance_at_closest_hill", "au", out.closest_au)
     pair = np.array(["+".join(map(str, two)) if any(two) else "" for two in out.closest_pair.tolist()], dtype=np.str_)
     yield Field("closest_pair", "", _named(table, pair))
     for name, unit in PLANETS:

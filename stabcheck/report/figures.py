@@ -112,6 +112,7 @@ def chosen_plane(answer: Answer, orbits: RunTable, plane: tuple[str, str] | None
     if plane is not None:
         # A column may be asked for by its name in the scenario, too.
         columns |= {column.name: column for column in (*drawn_columns(orbits), *element_columns(orbits))}
+        columns |= {name.replace(" ", "_"): column for name, column in columns.items()}  # as the export has it
         missing = [name for name in plane if name not in columns]
         if missing:
             raise StabcheckError(
@@ -161,12 +162,13 @@ def survival_with_time(answer: Answer) -> "Figure":
         return _nothing(figure, axes, "no orbit")
     unknown = answer.survived.unknown
     band = f"{100 * curve.confidence:g} % limits, pointwise"
-    axes.fill_between(curve.time, curve.lower, curve.upper, color="#d5dde5", linewidth=0, label=band)
+    axes.fill_between(curve.time, curve.lower, curve.upper, color="#d5dde5", linewidth=0, label=band, step="post")
     known = f"orbits: {answer.counts.orbits}" if not unknown else f"{unknown} unknown draws: survived"
-    axes.plot(curve.time, curve.share_most, color=LIVING_LINE, label=known, clip_on=False)
+    steps: dict[str, Any] = {"drawstyle": "steps-post", "clip_on": False}
+    axes.plot(curve.time, curve.share_most, color=LIVING_LINE, label=known, **steps)
     if unknown:
         lost = f"{unknown} unknown draws: broken when last known"
-        axes.plot(curve.time, curve.share_least, color="#e07b00", linestyle=(0, (4, 2)), label=lost, clip_on=False)
+        axes.plot(curve.time, curve.share_least, color="#e07b00", linestyle=(0, (4, 2)), label=lost, **steps)
     axes.set_xscale("log")
     axes.set_xlim(curve.time[0], curve.time[-1])
     axes.set_ylim(0.0, 1.0)

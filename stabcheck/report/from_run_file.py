@@ -118,9 +118,29 @@ def facts_of(run: RunFile, ensemble: Ensemble) -> RunFacts:
         command=f"stabcheck screen {run.path.stem}.toml --draws {asked}",
         physical_radii=bool(endings.get("mass_radius")) or all("radius" in body for body in bodies),
         mass_radius=str(endings.get("mass_radius", "")) if not all("radius" in body for body in bodies) else "",
+        inclinations=_inclinations(scenario),
         star_age_d=_days(scenario.get("star", {}).get("age")),
         keplerian_departure_m_s=_departure_m_s(scenario, ensemble),
     )
+
+
+def _inclinations(scenario: dict[str, Any]) -> str:
+    """Say how inclinations and nodes came about."""
+    if scenario["elements"]["frame"] == "cartesian":
+        return ""
+    plane = scenario.get("plane", {})
+    if "inclination" not in plane:
+        nodes = f"; nodes: {plane['nodes']}" if "nodes" in plane else ""
+        return f"Inclinations and nodes are those given for each planet{nodes}."
+    common = plane["inclination"]
+    drawn = "isotropic (cos i uniform, 0 to 90 deg)" if common == "isotropic" else _in_words(common)
+    scatter = plane.get("mutual_scatter")
+    tilt = f"tilted by a Rayleigh law of scale {_in_words(scatter)} about it" if scatter else "exactly coplanar in it"
+    return f"One plane common to all orbits has an inclination of {drawn}; the orbits are {tilt}."
+
+
+def _in_words(value: Any) -> str:
+    return f"column {value['column']}" if isinstance(value, dict) else str(value)
 
 
 def _asked(run: RunFile) -> int:

@@ -85,6 +85,11 @@ def _draws(answer: Answer) -> Iterator[str]:
     if refused:
         reasons = "; ".join(f"{reason}: {number}" for reason, number in counts.refused.items())
         yield f"Of these, {refused} are not orbits and were left out without replacement ({reasons})."
+    if facts.source == "table":
+        yield (
+            "Unequal errors were read as median and central 68 %, half of the probability on each side; an upper limit "
+            "as a half-normal with that quantile."
+        )
     yield _frame(answer)
     if facts.mass_radius:
         yield f"Radii follow the mass-radius relation {_cite(f'radii {facts.mass_radius}')}."
@@ -101,7 +106,7 @@ def _frame(answer: Answer) -> str:
     cited = (
         f" {_cite('jacobi elements of a velocity fit')}" if (facts.frame, facts.fit) == ("jacobi", "keplerian") else ""
     )
-    return f"Elements are {facts.frame}{cited} and {kind}."
+    return f"Elements are {facts.frame}{cited} and {kind}. {facts.inclinations}".rstrip()
 
 
 def _integration(answer: Answer) -> Iterator[str]:
@@ -120,6 +125,9 @@ def _integration(answer: Answer) -> Iterator[str]:
         yield _handovers(answer)
     if plan.get("relativity", False):
         yield f"Relativity was included as a potential that moves the periastron at its rate {_cite('relativity')}."
+    else:
+        yield "Relativity was left out."
+    yield "Tides and unseen planets were left out."
     if numerics.energy_error:
         yield (
             f"Relative energy errors of trusted draws have a median of {numerics.energy_error[1]:.1e} and stay below "
@@ -156,7 +164,8 @@ def _handovers(answer: Answer) -> str:
     plan, numerics = answer.facts.plan, answer.numerics
     reasons = ", ".join(f"{reason}: {number}" for reason, number in numerics.handovers.items())
     return (
-        f"Where two planets came within {plan['handover_hill']:g} mutual Hill radii, or an orbit opened, a draw was "
+        f"Where two planets came within {plan['handover_hill']:g} momentary mutual Hill radii (with the distances from "
+        "the centre of mass of all inside in place of the axes), or an orbit became unbound, a draw was "
         f"followed on by IAS15 {_cite('method ias15')} from a stored state at least one outer orbit before, and given "
         f"back to the map after ten quiet outer orbits (draws: {reasons}; {numerics.times_handed} times in all, "
         f"{numerics.times_returned} given back)."

@@ -38,6 +38,8 @@ class RunFacts:
         Whether every planet has a radius.
     mass_radius : str
         Name of the mass-radius relation in use, empty for none.
+    inclinations : str
+        How inclinations and nodes came about, as a sentence; empty where the states were given.
     """
 
     title: str
@@ -52,6 +54,7 @@ class RunFacts:
     command: str
     physical_radii: bool = False
     mass_radius: str = ""
+    inclinations: str = ""
     star_age_d: float = np.nan
     keplerian_departure_m_s: float = np.nan
     engine: str = "rebound"

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping, Sequence
 import numpy as np
 
 from stabcheck.report.answer import Answer
-from stabcheck.report.constrained import ConstrainedRow, Limits
+from stabcheck.report.constrained import FEWEST_FOR_SHIFT, ConstrainedRow, Limits
 from stabcheck.report.intervals import Fraction
 from stabcheck.report.spans import Range, brief
 from stabcheck.report.survival import SurvivalCurve
@@ -144,8 +144,16 @@ def _constrained(answer: Answer) -> Iterator[str]:
     numbers = (table.effective_before, table.effective_kept, table.effective_regular)
     yield "effective draws: {:.1f} before, {:.1f} after, {:.1f} after and regular".format(*numbers)
     shifted = [f"{row.name} ({row.shift:+.2f})" for row in table.by_shift()[:SHIFTS_SHOWN]]
-    if shifted:
+    if table.effective_kept < FEWEST_FOR_SHIFT:
+        yield from _wrapped(
+            f"fewer than {FEWEST_FOR_SHIFT} independent draws live: no error of a shift is given, none is singled out"
+        )
+    elif shifted:
         yield from _wrapped("most shifted: " + ", ".join(shifted))
+        yield from _wrapped(
+            f"(± is what chance alone leaves of a shift if those that live were a random part of all; of "
+            f"{len(table.rows)} parameters, some go beyond twice that by chance)"
+        )
 
 
 def _limits(answer: Answer) -> Iterator[str]:
@@ -159,7 +167,8 @@ def _limits(answer: Answer) -> Iterator[str]:
 
 
 def _row(row: ConstrainedRow) -> tuple[str, ...]:
-    shift = "-" if math.isnan(row.shift) else f"{row.shift:+.2f} ± {row.shift_error:.2f}"
+    error = "" if math.isnan(row.shift_error) else f" ± {row.shift_error:.2f}"
+    shift = "-" if math.isnan(row.shift) else f"{row.shift:+.2f}{error}"
     width = "-" if math.isnan(row.narrowing) else f"{row.narrowing:.2f}"
     digits = decimals(row)
     return _name(row), _middle(row.before, digits), _middle(row.kept, digits), shift, width

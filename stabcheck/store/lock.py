@@ -119,7 +119,10 @@ class WriterLock:
         except OSError as problem:
             os.close(self._fd)
             raise RunFileError(
-                "the side file of the run file cannot be written", where=str(self.path), why=str(problem)
+                "the side file of the run file cannot be written",
+                where=str(self.path),
+                why=str(problem),
+                do="check the space on the disk, or give a --run-file elsewhere",
             ) from problem
 
     def _busy(self, holder: bytes) -> RunFileBusy:

@@ -35,7 +35,12 @@ class Readable:
         """
         rows = self._rows("SELECT value FROM about WHERE item = ?", (item,))
         if not rows:
-            raise RunFileError(f"the run file says nothing about {item!r}", where=str(self.path), why="it is damaged")
+            raise RunFileError(
+                f"the run file says nothing about {item!r}",
+                where=str(self.path),
+                why="it is damaged",
+                do="take a copy from before",
+            )
         return str(rows[0][0])
 
     def draw_count(self) -> int:

@@ -82,7 +82,12 @@ class RunFile(Readable):
         lock = WriterLock(path)
         try:
             if path.exists():
-                raise RunFileError("there is a file already", where=str(path), why="nothing is ever overwritten")
+                raise RunFileError(
+                    "there is a file already",
+                    where=str(path),
+                    why="nothing is ever overwritten",
+                    do="give another name, or continue it",
+                )
             text = identities.canonical_text(identity)
             about = {
                 "identity": text,

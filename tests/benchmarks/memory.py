@@ -1,10 +1,11 @@
 """What many draws need: memory of the owner, size of the run file, time a draw beyond its steps. Run: python memory.py
 
-1. Largest resident memory of a process that screens 100,000 draws of two planets over ten orbits, minus that for 10,000
-   draws, each in a fresh process. Everything runs in that one process, so what the engine keeps is in it too. Aim: at
-   most 50 MB more.
+Ten minutes. Draws follow their planets for ten orbits only.
+
+1. Largest resident memory of the owner of two workers for 100,000 draws of two planets, minus that for 10,000, each in
+   a fresh process. Aim: at most 50 MB more. The same for a screen in one process, where the engine is in it too.
 2. Size of the run file over its draws, for 2 to 8 planets.
-3. Process time a draw of these, which is nearly all building, handing out and storing, beside the steps themselves.
+3. Process time a draw in one process: building, handing out, storing, and some 250 steps.
 """
 
 import json
@@ -32,11 +33,11 @@ def scenario_of(planets: int) -> Scenario:
     return Scenario.from_text(SYSTEM.format(span=ORBITS) + tables)
 
 
-def be_owner(planets: int, draws: int) -> None:
+def be_owner(planets: int, draws: int, workers: int) -> None:
     """Screen in this process, and tell what it took; runs as a process of its own."""
-    screen(scenario_of(planets), draws=1, run_file="warm.run", workers=0)  # kernels are loaded
+    screen(scenario_of(planets), draws=1, run_file="warm.run", workers=workers)  # kernels are loaded
     start, before = time.process_time(), time.perf_counter()
-    run = screen(scenario_of(planets), draws=draws, run_file="it.run", workers=0)
+    run = screen(scenario_of(planets), draws=draws, run_file="it.run", workers=workers)
     spent, passed = time.process_time() - start, time.perf_counter() - before
     if run.finished != draws:
         raise SystemExit(run.as_text())
@@ -45,35 +46,38 @@ def be_owner(planets: int, draws: int) -> None:
     print(json.dumps({"peak MB": peak / 1e6, "file": Path("it.run").stat().st_size, "cpu": spent, "s": passed}))
 
 
-def measured(planets: int, draws: int) -> dict[str, float]:
+def measured(planets: int, draws: int, workers: int) -> dict[str, float]:
     with tempfile.TemporaryDirectory() as folder:
-        command = [sys.executable, str(Path(__file__).resolve()), str(planets), str(draws)]
+        command = [sys.executable, str(Path(__file__).resolve()), *map(str, (planets, draws, workers))]
         done = subprocess.run(command, cwd=folder, stdout=subprocess.PIPE, text=True, check=True)
     found: dict[str, float] = json.loads(done.stdout)
     return found
 
 
-def main() -> None:
-    few, many = measured(2, FEW), measured(2, MANY)
+def growth(workers: int) -> dict[str, object]:
+    few, many = (measured(2, draws, workers) for draws in (FEW, MANY))
     more = many["peak MB"] - few["peak MB"]
-    print(
-        f"peak memory: {few['peak MB']:.0f} MB for {FEW} draws, {many['peak MB']:.0f} MB for {MANY}: {more:.1f} MB more"
-    )
-    each = 1e3 * (many["cpu"] - few["cpu"]) / (MANY - FEW)
-    print(f"{ORBITS} orbits of 2 planets: {each:.2f} ms of CPU a draw ({many['s']:.0f} s for {MANY})", flush=True)
-    sizes = {planets: measured(planets, FOR_SIZE)["file"] / FOR_SIZE for planets in range(2, 9)}
-    sizes[2] = many["file"] / MANY
+    cpu_ms = 1e3 * (many["cpu"] - few["cpu"]) / (MANY - FEW)
+    print(f"{workers or 'no'} workers, {FEW} and {MANY} draws of 2 planets over {ORBITS} orbits:")
+    print(f"   peak memory of the owner {few['peak MB']:.0f} MB and {many['peak MB']:.0f} MB: {more:.1f} MB more")
+    print(f"   {many['s']:.0f} s for {MANY}; CPU time of this process {cpu_ms:.2f} ms a draw", flush=True)
+    peaks = [round(few["peak MB"], 1), round(many["peak MB"], 1)]
+    return {"workers": workers, "draws": [FEW, MANY], "peak MB": peaks, "CPU ms a draw": round(cpu_ms, 3)}
+
+
+def main() -> None:
+    grown = [growth(2), growth(0)]
+    sizes = {planets: measured(planets, FOR_SIZE, 0)["file"] / FOR_SIZE for planets in range(2, 9)}
     print("run file, bytes a draw: " + "   ".join(f"{planets} planets {size:.0f}" for planets, size in sizes.items()))
     slope, fixed = np.polyfit(list(sizes), list(sizes.values()), 1)
-    print(f"about {fixed:.0f} + {slope:.0f} a planet (the number of drawn quantities grows with it: 2 a planet here)")
+    print(f"about {fixed:.0f} + {slope:.0f} a planet, with two drawn quantities a planet")
     rounded = {str(planets): round(size) for planets, size in sizes.items()}
-    peaks = [round(few["peak MB"], 1), round(many["peak MB"], 1)]
-    keep("memory", {"draws": [FEW, MANY], "peak MB": peaks, "CPU ms a draw": round(each, 3), "bytes a draw": rounded})
+    keep("memory", {"grown": grown, "bytes a draw": rounded})
 
 
 if __name__ == "__main__":
     match sys.argv[1:]:
-        case [planets, draws]:
-            be_owner(int(planets), int(draws))
+        case [planets, draws, workers]:
+            be_owner(int(planets), int(draws), int(workers))
         case _:
             main()

@@ -146,7 +146,7 @@ def test_a_bad_file_is_refused_with_the_reason_and_its_path(tmp_path, case):
     path = written(tmp_path, ending, content)
     with pytest.raises(SampleFileError) as refused:
         read_samples(path, roles)
-    assert str(path) in refused.value.where
+    assert str(path) in refused.value.where and refused.value.do
     for word in words:
         assert word in str(refused.value)
 
