@@ -66,13 +66,13 @@ def growth(workers: int) -> dict[str, object]:
 
 
 def main() -> None:
-    grown = [growth(2), growth(0)]
     sizes = {planets: measured(planets, FOR_SIZE, 0)["file"] / FOR_SIZE for planets in range(2, 9)}
     print("run file, bytes a draw: " + "   ".join(f"{planets} planets {size:.0f}" for planets, size in sizes.items()))
     slope, fixed = np.polyfit(list(sizes), list(sizes.values()), 1)
     print(f"about {fixed:.0f} + {slope:.0f} a planet, with two drawn quantities a planet")
-    rounded = {str(planets): round(size) for planets, size in sizes.items()}
-    keep("memory", {"grown": grown, "bytes a draw": rounded})
+    keep("memory", {"bytes a draw": {str(planets): round(size) for planets, size in sizes.items()}})
+    for workers in (2, 0):
+        keep("memory", growth(workers))
 
 
 if __name__ == "__main__":

@@ -226,11 +226,12 @@ def in_place(draws: int) -> dict[str, object]:
 
 
 def main() -> None:
-    short = two_workers(80)
-    long = owner_share([with_workers(LONG, 12) for _ in range(3)], 12)
+    keep("throughput", {"pairs": PAIRS, **two_workers(80)})
     keep(
-        "throughput", {"pairs": PAIRS, **short, "owner / workers, long draws": long.as_list(), "in place": in_place(4)}
+        "throughput",
+        {"owner / workers, long draws": owner_share([with_workers(LONG, 12) for _ in range(3)], 12).as_list()},
     )
+    keep("throughput", {"pairs": PAIRS, "in place": in_place(4)})
 
 
 if __name__ == "__main__":
