@@ -31,7 +31,7 @@ class Worker:
     ready : bool
         It has imported and compiled everything.
     failure : str
-        The last line of the exception that ended its engine, if one did.
+        The exception that ended its engine, if one did, with its traceback.
     """
 
     def __init__(self, name: str, engines: Sequence[str], plan: Plan) -> None:

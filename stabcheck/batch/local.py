@@ -223,7 +223,7 @@ class _Supervisor:
                 if wants_more:
                     self._answer(worker)
             case ("failed", str() as text):
-                worker.failure = text.strip().rpartition("\n")[2]
+                worker.failure = text
                 self._log("engine failed", f"{worker.name}: {text}")
             case _:
                 raise WorkerError(f"{worker.name} sent what nobody understands: {message!r}")
@@ -259,7 +259,7 @@ class _Supervisor:
             raise WorkerError(
                 "the workers die before they can begin",
                 where=f"{self._deaths_before_ready} workers, one after the other",
-                why=text or "they said nothing; a process killed from outside (memory?) looks like that",
+                why=_gist(text) or "they said nothing; a process killed from outside (memory?) looks like that",
                 do="what is stored is safe; mend what they say and give the same command again",
             )
 
@@ -269,7 +269,7 @@ class _Supervisor:
             raise WorkerError(
                 f"{DEATHS_IN_A_ROW} workers died one after the other without finishing a draw",
                 where=how,
-                why=text or "they said nothing; a process killed from outside (memory?) looks like that",
+                why=_gist(text) or "they said nothing; a process killed from outside (memory?) looks like that",
                 do="what is stored is safe; look at the log in the run file, then give the same command again",
             )
 
@@ -333,6 +333,13 @@ class _Supervisor:
         for worker in list(self._workers.values()):
             self._dismiss(worker)
         self._selector.close()
+
+
+def _gist(text: str) -> str:
+    """Take the exception out of a traceback: its last line that is not indented, and what follows."""
+    lines = text.splitlines()
+    begins = [k for k, line in enumerate(lines) if line[:1].strip()]
+    return "\n".join(lines[begins[-1] :]) if begins else text
 
 
 def _died_on(task: Task, plan: Plan) -> Outcome:

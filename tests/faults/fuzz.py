@@ -95,17 +95,16 @@ def long_run(examples: int, number: int, record: Path, figures_every: int) -> in
 
 def summary(record: Path) -> str:
     notes = [json.loads(line) for line in record.read_text().splitlines()]
-    ends = Counter(note["end"] for note in notes)
+    ends = Counter("mended" if "mended" in note else note["end"] for note in notes)
     done = [note for note in notes if note["end"] == "done"]
     words = Counter(word for note in done for word in note["verdicts"])
     methods = Counter(method for note in done for method in note["methods"] if method)
     refusals = len({re.sub(r"[\d.]+|'[^']*'", "#", note["what"]) for note in notes if note["end"] == "refused"})
     most = {word: count for word, count in words.most_common(8)}
     longest = max((note["seconds"] for note in done), default=0.0)
-    return (
-        f"{len(notes)} examples: {ends['done']} done, {ends['refused']} refused in {refusals} ways, {ends['slow']} "
-        f"too slow, {ends['wrong']} wrong; {dict(methods)}; {most}; longest screen {longest} s"
-    )
+    counts = f"{ends['done']} done, {ends['refused']} refused in {refusals} ways, {ends['slow']} too slow"
+    faults = f"{ends['wrong']} wrong, {ends['mended']} wrong then and mended since"
+    return f"{len(notes)} examples: {counts}, {faults}; {dict(methods)}; {most}; longest screen {longest} s"
 
 
 def main() -> int:
