@@ -83,8 +83,7 @@ def handed_back(life: Life, setting: Setting, plan: Plan) -> bool:
     waiting = life.time_d(setting) - track.clock[kernels.LAST_CLOSE] < stage.quiet_d
     if not stage.adaptive or waiting or track.clock[kernels.INSIDE] != 0.0:
         return False
-    elements = np.empty((setting.mass.size - 1, 2))
-    kernels.jacobi_elements(track.state, setting.mass, np.empty(setting.mass.size), elements)
+    elements = _elements(track, setting)
     if not _a_map_could(elements, setting, plan):
         life.stage = replace(stage, quiet_d=np.inf)  # the order of the planets does not come back: do not ask again
         return False
@@ -94,6 +93,13 @@ def handed_back(life: Life, setting: Setting, plan: Plan) -> bool:
     next_stage = _stage(setting, plan, Method.WHFAST, 1.0 / elements[:, 0], np.sqrt(elements[:, 1]))
     _go_on(life, setting, next_stage, track)
     return True
+
+
+def _elements(track: Track, setting: Setting) -> Array:
+    """Osculating (1/a, e²) of each planet, (planet, 2)."""
+    elements = np.empty((setting.mass.size - 1, 2))
+    kernels.jacobi_elements(track.state, setting.mass, np.empty(setting.mass.size), elements)
+    return elements
 
 
 def _a_map_could(elements: Array, setting: Setting, plan: Plan) -> bool:
@@ -112,8 +118,7 @@ def _go_on(life: Life, setting: Setting, stage: Stage, track: Track) -> None:
     story.orbit_energy_error = max(story.orbit_energy_error, float(track.worst[1]))
     before = track.extremes
     story.extremes = (merged(np.array(story.extremes), before) if story.extremes else before).tolist()
-    elements = np.empty((setting.mass.size - 1, 2))
-    kernels.jacobi_elements(track.state, setting.mass, np.empty(setting.mass.size), elements)
+    elements = _elements(track, setting)
     track.extremes = np.ascontiguousarray(np.repeat(elements, 2, axis=1))
     began = kernels.energy(track.state, setting.mass, setting.relativity_strength)
     track.worst = np.array([0.0, 0.0, began])
